@@ -1,0 +1,1 @@
+"""The contract: records, schemas, units; what client and service agree on."""

@@ -1,0 +1,1 @@
+"""The service: web adapters, intake and the engine."""

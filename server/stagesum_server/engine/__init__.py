@@ -1,0 +1,1 @@
+"""The numbers: numpy and scipy only, nothing of HTTP, schemas or units."""

@@ -1,0 +1,215 @@
+"""One budget: S built once, the methods read it, the answer's records are filled."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
+
+import numpy as np
+from stagesum_schemas.records import (
+    CONTRACT,
+    Budget,
+    Checks,
+    Histogram,
+    Interval,
+    MonteCarlo,
+    Point,
+    PointMonteCarlo,
+    Rss,
+    Service,
+    Verdict,
+    WorstCase,
+)
+
+from stagesum_server.engine import correlation, monte_carlo, rss, sensitivity, verdict, worst_case
+from stagesum_server.engine.contributions import contributions, variance_parts
+from stagesum_server.engine.sampling import Sampler
+
+if TYPE_CHECKING:
+    from numpy.typing import NDArray
+
+    from stagesum_server.engine.chain import Model
+
+    Array = NDArray[np.float64]
+
+CAUTIONS = (
+    "An estimate from declared data, not a measurement: it is no better than the limits, laws and correlations stated.",
+    "Where safety depends on the result, the applicable standard, local codes and a qualified engineer decide.",
+)
+RANGE_SIGMAS = 12.0  # half-width of the Monte Carlo grid where a source has no bounds
+
+
+@dataclass(frozen=True)
+class _Analysis:
+    """What the methods found, before it is written into records."""
+
+    model: Model
+    S: Array
+    extremes: worst_case.Extremes
+    rss: rss.Propagation
+    outside: Array | None
+    tally: monte_carlo.Tally | None
+    stable: tuple[bool, float] | None
+
+
+def compute(model: Model, version: str, threads: int = 1) -> Budget:
+    """Answer a budget: every method asked for, contributions, verdict, checks."""
+    found = _analyse(model, threads)
+    governing = verdict.governing_point(model.limit, found.rss, found.extremes)
+    points = tuple(_point(found, p) for p in range(len(model.points)))
+    together = _monte_carlo(found, governing)
+    return Budget(
+        title=model.title,
+        service=Service("stagesum", version, CONTRACT),
+        refer_to=model.refer_to,
+        unit=model.unit,
+        span=model.span,
+        coverage=model.coverage,
+        points=points,
+        governing_point=governing,
+        monte_carlo=together,
+        contributions=contributions(model, found.S, found.extremes, found.rss, governing),
+        variance_parts=variance_parts(model, found.rss, governing),
+        verdict=_verdict(found, together),
+        checks=_checks(found, points),
+        assumptions=model.assumptions,
+        cautions=CAUTIONS,
+    )
+
+
+def _analyse(model: Model, threads: int) -> _Analysis:
+    S = sensitivity.matrix(model)
+    clusters = correlation.clusters(model)
+    extremes = worst_case.extremes(model, S, clusters)
+    propagation = rss.propagate(model, S, clusters)
+    share = rss.outside(propagation, model.limit.lower, model.limit.upper) if model.limit else None
+    tally, stable = None, None
+    if "monte_carlo" in model.methods:
+        tally, stable = _simulate(model, clusters, extremes, propagation, threads)
+    return _Analysis(model, S, extremes, propagation, share, tally, stable)
+
+
+def _simulate(
+    model: Model,
+    clusters: tuple[correlation.Cluster, ...],
+    extremes: worst_case.Extremes,
+    propagation: rss.Propagation,
+    threads: int,
+) -> tuple[monte_carlo.Tally, tuple[bool, float] | None]:
+    """Run the trials; the grid spans the worst case, or so many sigmas where a source has no bounds."""
+    lower, upper = extremes.lower, extremes.upper
+    if not all(variable.law.bounded for variable in model.variables):
+        lower = np.minimum(lower, propagation.mean - RANGE_SIGMAS * propagation.sigma)
+        upper = np.maximum(upper, propagation.mean + RANGE_SIGMAS * propagation.sigma)
+    tally = monte_carlo.Tally(monte_carlo.Grid.between(lower, upper), propagation.mean, model.limit)
+    asked = model.monte_carlo
+    sampler = Sampler(model, clusters, asked.seed)
+    if asked.adaptive:
+        return tally, monte_carlo.run_adaptively(sampler, tally, model.coverage, asked.max_trials, threads)
+    monte_carlo.run(sampler, tally, 0, asked.trials or monte_carlo.DEFAULT_TRIALS, threads)
+    return tally, None
+
+
+# ---------------------------------------------------------------------------------------------
+# Records
+
+
+def _point(found: _Analysis, p: int) -> Point:
+    model = found.model
+    point, limit = model.points[p], model.limit
+    return Point(
+        input=point.input,
+        conditions=point.conditions,
+        nominal=float(model.nominal[p, model.node]),
+        limit=Interval(float(limit.lower[p]), float(limit.upper[p])) if limit else None,
+        worst_case=_worst_case(found, p) if "worst_case" in model.methods else None,
+        rss=_rss(found, p) if "rss" in model.methods else None,
+        monte_carlo=_point_monte_carlo(found.tally, model, p) if found.tally else None,
+    )
+
+
+def _worst_case(found: _Analysis, p: int) -> WorstCase:
+    x = found.extremes
+    first = Interval(float(x.first_lower[p].sum()), float(x.first_upper[p].sum()))
+    return WorstCase(float(x.lower[p]), float(x.upper[p]), first)
+
+
+def _rss(found: _Analysis, p: int) -> Rss:
+    r, worst, limit = found.rss, found.extremes, found.model.limit
+    mean, sigma, dof = float(r.mean[p]), float(r.sigma[p]), float(r.dof[p])
+    lower, upper = max(float(r.lower[p]), float(worst.lower[p])), min(float(r.upper[p]), float(worst.upper[p]))
+    share = float(found.outside[p]) if found.outside is not None else None
+    capability = _capability(float(limit.lower[p]), float(limit.upper[p]), mean, sigma) if limit else (None, None)
+    return Rss(
+        mean=mean,
+        sigma=sigma,
+        coverage_factor=float(r.factor[p]),
+        dof=dof if np.isfinite(dof) else None,
+        lower=lower,
+        upper=upper,
+        cut=lower > float(r.lower[p]) or upper < float(r.upper[p]),
+        yield_=None if share is None else 1.0 - share,
+        outside_ppm=None if share is None else 1e6 * share,
+        cp=capability[0],
+        cpk=capability[1],
+    )
+
+
+def _capability(lower: float, upper: float, mean: float, sigma: float) -> tuple[float | None, float | None]:
+    """Cp = (U - L) / 6 sigma and Cpk = min(U - mean, mean - L) / 3 sigma; none without spread."""
+    if sigma == 0.0:
+        return None, None
+    return (upper - lower) / (6.0 * sigma), min(upper - mean, mean - lower) / (3.0 * sigma)
+
+
+def _point_monte_carlo(tally: monte_carlo.Tally, model: Model, p: int) -> PointMonteCarlo:
+    passed = int(tally.inside[p])
+    has_limit = model.limit is not None
+    return PointMonteCarlo(
+        float(tally.mean[p]),
+        float(tally.sigma[p]),
+        *tally.interval(p, model.coverage),
+        shortest=Interval(*tally.shortest(p, model.coverage)),
+        yield_=passed / tally.trials if has_limit else None,
+        yield_interval=monte_carlo.clopper_pearson(passed, tally.trials) if has_limit else None,
+    )
+
+
+def _monte_carlo(found: _Analysis, governing: int) -> MonteCarlo | None:
+    tally, asked = found.tally, found.model.monte_carlo
+    if tally is None:
+        return None
+    edges, counts = tally.histogram(governing)
+    has_limit = found.model.limit is not None
+    return MonteCarlo(
+        trials=tally.trials,
+        seed=asked.seed,
+        adaptive=asked.adaptive,
+        converged=found.stable[0] if found.stable else None,
+        tolerance=found.stable[1] if found.stable else None,
+        histogram=Histogram(tuple(edges.tolist()), tuple(counts.tolist())),
+        joint_yield=tally.inside_all / tally.trials if has_limit else None,
+        joint_yield_interval=monte_carlo.clopper_pearson(tally.inside_all, tally.trials) if has_limit else None,
+    )
+
+
+def _verdict(found: _Analysis, together: MonteCarlo | None) -> Verdict | None:
+    model = found.model
+    said: dict[str, str] = {}
+    if model.limit is None:
+        return None
+    if "worst_case" in model.methods:
+        said["worst_case"] = verdict.of_worst_case(found.extremes, model.limit)
+    if "rss" in model.methods and found.outside is not None:
+        said["rss"] = verdict.of_rss(found.outside, model.limit)
+    if together is not None and found.tally is not None:
+        interval = monte_carlo.clopper_pearson(found.tally.inside_all, found.tally.trials)
+        said["monte_carlo"] = verdict.of_monte_carlo(interval, model.limit)
+    return verdict.overall(said, model.limit)
+
+
+def _checks(found: _Analysis, points: tuple[Point, ...]) -> Checks | None:
+    if found.tally is None or "rss" not in found.model.methods:
+        return None
+    against = [Interval(point.monte_carlo.lower, point.monte_carlo.upper) for point in points if point.monte_carlo]
+    return verdict.check_rss(found.model, found.rss, against, found.tally.trials)
