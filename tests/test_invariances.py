@@ -59,13 +59,19 @@ def test_the_order_of_a_stages_sources_does_not_matter(post, chain):
     turned = copy.deepcopy(chain)
     for stage in turned["stages"]:
         stage["sources"].reverse()
-    assert numbers(post("/v1/budget", turned)) == pytest.approx(numbers(post("/v1/budget", chain)), rel=1e-10, abs=1e-15)
+    assert numbers(post("/v1/budget", turned)) == pytest.approx(
+        numbers(post("/v1/budget", chain)), rel=1e-10, abs=1e-15
+    )
 
 
 def test_a_negative_gain_mirrors_the_error(post):
     def answer(gain: float) -> dict:
         source = {"name": "e", "effect": "offset", "min": -1, "max": 3}
-        body = {"input": {"unit": "V", "values": [1]}, "stages": [{"name": "s", "gain": gain, "sources": [source]}], **METHODS}
+        body = {
+            "input": {"unit": "V", "values": [1]},
+            "stages": [{"name": "s", "gain": gain, "sources": [source]}],
+            **METHODS,
+        }
         return post("/v1/budget", body)["points"][0]
 
     plus, minus = answer(2), answer(-2)

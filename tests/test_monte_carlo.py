@@ -69,7 +69,9 @@ def test_the_symmetric_interval_is_that_of_the_law(post):
 
 def test_the_shortest_interval_is_shorter_where_the_law_leans(post):
     """A triangular law with its peak at one end: the shortest 90 % interval ends at that peak."""
-    body = sum_of([{"min": 0, "max": 3, "mean": 1, "shape": "triangular"}], coverage=0.9, monte_carlo={"trials": 200_000})
+    body = sum_of(
+        [{"min": 0, "max": 3, "mean": 1, "shape": "triangular"}], coverage=0.9, monte_carlo={"trials": 200_000}
+    )
     found = post("/v1/budget", body)["points"][0]["monte_carlo"]
     law = stats.triang(0, 0, 3)
     assert found["shortest"]["lower"] == pytest.approx(0, abs=0.02)

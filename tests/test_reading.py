@@ -135,7 +135,9 @@ def test_typ_sigmas_divides_typ(post):
 def test_normal_with_a_max_is_not_screened(post):
     found = read(post, {"max": "3 mV", "shape": "normal"})
     assert (found["sigma"], found["bounds"]) == (1.0, [-3.0, 3.0])
-    assert read(post, {"max": "3 mV", "shape": "normal"}, rules={"max_sigmas": 2.576})["sigma"] == pytest.approx(3 / 2.576)
+    assert read(post, {"max": "3 mV", "shape": "normal"}, rules={"max_sigmas": 2.576})["sigma"] == pytest.approx(
+        3 / 2.576
+    )
 
 
 def test_a_rejection_in_db_is_an_error_of_ten_to_the_minus_r_over_twenty(post):

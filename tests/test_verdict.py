@@ -95,7 +95,9 @@ def test_the_check_of_rss_says_where_the_simple_method_fails(post):
     """One uniform law: the normal interval is far off (JCGM 101:2008, 8.2)."""
     answer = post("/v1/budget", chain({"max": "1 mV", "at": "output"}, coverage=0.95))
     assert answer["checks"]["rss_holds"] is False
-    normal = post("/v1/budget", chain({"typ": "1.2 mV", "at": "output"}, coverage=0.95, monte_carlo={"trials": 2_000_000}))
+    normal = post(
+        "/v1/budget", chain({"typ": "1.2 mV", "at": "output"}, coverage=0.95, monte_carlo={"trials": 2_000_000})
+    )
     assert normal["checks"]["rss_holds"] is True
 
 

@@ -82,7 +82,11 @@ def test_the_exact_worst_case_is_near_the_first_order_sum_for_small_errors(post,
         for source in stage["sources"]:
             for member in ("max",):
                 value = source[member]
-                source[member] = value * 1e-6 if not isinstance(value, str) else f"{float(value.split()[0]) * 1e-6} {value.split()[1]}"
+                source[member] = (
+                    value * 1e-6
+                    if not isinstance(value, str)
+                    else f"{float(value.split()[0]) * 1e-6} {value.split()[1]}"
+                )
     for point in post("/v1/budget", body)["points"]:
         worst = point["worst_case"]
         assert worst["lower"] == pytest.approx(worst["first_order"]["lower"], rel=1e-4, abs=1e-18)

@@ -16,7 +16,7 @@ from functools import cache
 from typing import Any, Self
 
 if typing.TYPE_CHECKING:
-    from collections.abc import Callable, Hashable, Mapping
+    from collections.abc import Callable, Mapping
 
     from stagesum_schemas.units import Quantity, Unit
 
@@ -25,9 +25,9 @@ METHODS = ("worst_case", "rss", "monte_carlo")
 
 
 @cache
-def _members(cls: Hashable) -> tuple[tuple[str, str], ...]:
+def _members(cls: Any) -> tuple[tuple[str, str], ...]:
     """Give the (attribute, JSON member) pairs of a record class."""
-    return tuple((f.name, f.name.rstrip("_")) for f in fields(typing.cast("Any", cls)))
+    return tuple((f.name, f.name.rstrip("_")) for f in fields(cls))
 
 
 def _plain(value: Any) -> Any:
@@ -58,9 +58,9 @@ def _reader(hint: Any) -> Callable[[Any], Any]:
 
 
 @cache
-def _readers(cls: Hashable) -> tuple[tuple[str, str, Callable[[Any], Any]], ...]:
+def _readers(cls: Any) -> tuple[tuple[str, str, Callable[[Any], Any]], ...]:
     """Give (attribute, JSON member, reader) for each field of a record class."""
-    hints = typing.get_type_hints(typing.cast("Any", cls))
+    hints = typing.get_type_hints(cls)
     return tuple((name, member, _reader(hints[name])) for name, member in _members(cls))
 
 
@@ -77,9 +77,7 @@ class Record:
     @classmethod
     def from_dict(cls, data: Mapping[str, Any]) -> Self:
         """Make the record from its JSON form; members that this version doesn't know are passed over."""
-        return cls(
-            **{name: read(data[member]) for name, member, read in _readers(cls) if data.get(member) is not None}
-        )
+        return cls(**{name: read(data[member]) for name, member, read in _readers(cls) if data.get(member) is not None})
 
 
 # ---------------------------------------------------------------------------------------------

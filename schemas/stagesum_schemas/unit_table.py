@@ -109,10 +109,31 @@ TABLE: dict[str, _Entry] = {
     "count": _fixed(1, count=1),
 }
 
-ALIASES = {"Ω": "ohm", "Ohm": "ohm", "year": "yr", "counts": "count", "°C": "degC", "°F": "degF", "°": "deg", "µ": "u"}
+ALIASES = {"Ohm": "ohm", "year": "yr", "counts": "count", "°C": "degC", "°F": "degF", "°": "deg"}
 
 # named coherent units, by which a product of others is told (nA * ohm is V)
-COHERENT = ("m", "s", "A", "K", "mol", "cd", "V", "ohm", "W", "N", "Pa", "J", "C", "F", "S", "Wb", "T", "H", "Hz", "count")
+COHERENT = (
+    "m",
+    "s",
+    "A",
+    "K",
+    "mol",
+    "cd",
+    "V",
+    "ohm",
+    "W",
+    "N",
+    "Pa",
+    "J",
+    "C",
+    "F",
+    "S",
+    "Wb",
+    "T",
+    "H",
+    "Hz",
+    "count",
+)
 
 HINTS = {
     "k": "a prefix needs its unit, such as kohm",

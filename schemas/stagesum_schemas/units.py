@@ -29,7 +29,10 @@ _FACTOR = re.compile(
     r"(?:sqrt\((?P<root>[^\W\d_]+|°[CF])\)|√(?P<sign>[^\W\d_]+)|(?P<name>[^\W\d_]+|°[CF]?|%))"
     r"(?:\^(?P<power>-?[0-9](?:\.5)?))?"
 )
-_SPELLINGS = str.maketrans({"µ": "u", "μ": "u", "Ω": "ohm", "Ω": "ohm", "·": "*", "−": "-", "²": "^2", "³": "^3"})
+# both micro signs, both ohm signs (U+03A9, U+2126), middle dot, minus sign, superscripts
+_SPELLINGS = str.maketrans(
+    {"\u00b5": "u", "\u03bc": "u", "\u03a9": "ohm", "\u2126": "ohm", "·": "*", "\u2212": "-", "²": "^2", "³": "^3"}
+)
 
 Dimension = tuple[Fraction, ...]
 
@@ -182,10 +185,10 @@ def _scale(unit: Unit) -> tuple[Fraction, Fraction] | None:
 
 @lru_cache(maxsize=CACHED)
 def _parse_quantity(text: str) -> Quantity:
-    stripped = text.strip().replace("−", "-")
+    stripped = text.strip().replace("\u2212", "-")
     number = _NUMBER.match(stripped)
     if number is None:
-        raise UnitError(f"found {text!r}; write a number and a unit, such as \"150 uV\"")
+        raise UnitError(f'found {text!r}; write a number and a unit, such as "150 uV"')
     value, rest = float(number.group()), stripped[number.end() :]
     _refuse_odd_numbers(text, value, rest)
     rest = rest.strip()
@@ -200,7 +203,7 @@ def _refuse_odd_numbers(text: str, value: float, rest: str) -> None:
     if rest.startswith("_"):
         raise UnitError(f"found {text!r}; write digits without underscores")
     if re.match(r"[A-Za-z][0-9]", rest):
-        raise UnitError(f"found {text!r}; write the prefix with the unit, such as \"4.7 kohm\"")
+        raise UnitError(f'found {text!r}; write the prefix with the unit, such as "4.7 kohm"')
     if re.search(r"[0-9)]\s*[+-]|\*\*|[-+]\s*[0-9.]+\s*[A-Za-z]", rest):
         raise UnitError(f"found {text!r}; a number and a unit only, nothing is computed")
 
@@ -331,7 +334,7 @@ def _advice(text: str, plain: str, place: int) -> str:
     word = "".join(takewhile(lambda letter: letter.isalpha() or letter in "°%", rest))
     if not word:
         found = f"found {text!r}" if text == rest else f"found {text!r}, not understood from {rest!r} on"
-        return f"{found}; write units joined by * or /, such as \"nV/sqrt(Hz)\" or \"ppm/K\""
+        return f'{found}; write units joined by * or /, such as "nV/sqrt(Hz)" or "ppm/K"'
     if word in HINTS:
         return f"found {word!r} in {text!r}; {HINTS[word]}"
     same = [name for name in _all_names() if name.casefold() == word.casefold()]

@@ -24,6 +24,8 @@ from typing import TYPE_CHECKING, Literal
 
 import numpy as np
 
+from stagesum_server.engine.laws import averaged
+
 if TYPE_CHECKING:
     from numpy.typing import NDArray
     from stagesum_schemas.records import MonteCarloSpec
@@ -162,7 +164,7 @@ def _variables_of(model: Model, index: int) -> list[Variable]:
     sites = np.arange(source.factor.size)
     in_use = Variable(
         *common,
-        source.law.averaged(model.readings),
+        averaged(source.law, model.readings),
         source.law,
         model.readings,
         np.where(sites < count, source.factor, 0.0),
@@ -173,7 +175,7 @@ def _variables_of(model: Model, index: int) -> list[Variable]:
     at_calibration = [
         Variable(
             *common,
-            source.law.averaged(readings),
+            averaged(source.law, readings),
             source.law,
             readings,
             np.where(sites == site, source.factor, 0.0),

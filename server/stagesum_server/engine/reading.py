@@ -167,7 +167,7 @@ def _limits(figures: Figures) -> tuple[float, float]:
 def _content_inside_typ(typ: float, m: float, s: float, low: float, high: float) -> float:
     """Share of a normal law (m, s) cut at low and high that lies inside +-typ."""
     inside = laws.normal_content((max(-typ, low) - m) / s, (min(typ, high) - m) / s)
-    return inside / laws.normal_content((low - m) / s, (high - m) / s)
+    return float(inside / laws.normal_content((low - m) / s, (high - m) / s))
 
 
 def _sigma_from_cover(figures: Figures, share: float, low: float, high: float) -> float:
@@ -319,7 +319,7 @@ def _read_student_t(figures: Figures, rules: RulesSpec) -> Reading:
     scale, words = _parent_sigma(figures, rules, -math.inf, math.inf)
     spread = scale * math.sqrt(figures.dof / (figures.dof - 2.0))
     low, high, bounds, assumptions = _unbounded_limits(figures, rules, spread)
-    law = laws.StudentT(figures.centre, scale, figures.dof, low, high)
+    law = laws.StudentT(figures.centre, scale, figures.dof, low, high, declared=figures.limits is not None)
     scale_words = words.replace("sigma", "scale")
     return Reading(
         law, f"{_given(figures)}: Student t, {figures.dof:g} degrees of freedom, {scale_words}; {bounds}", assumptions
