@@ -21,7 +21,7 @@ if typing.TYPE_CHECKING:
     from stagesum_schemas.units import Quantity, Unit
 
 CONTRACT = "v1"
-METHODS = ("worst_case", "rss", "monte_carlo")
+METHODS = ("worst_case", "rss", "monte_carlo", "convolution")
 
 
 @cache
@@ -218,7 +218,7 @@ class BudgetRequest:
     rules: RulesSpec = RulesSpec()
     monte_carlo: MonteCarloSpec = MonteCarloSpec()
     readings_averaged: int = 1
-    methods: tuple[str, ...] = METHODS
+    methods: tuple[str, ...] | None = None
     coverage: float | None = None
     coverage_factor: float | None = None
 
@@ -275,6 +275,19 @@ class PointMonteCarlo(Record):
 
 
 @dataclass(frozen=True, slots=True)
+class PointConvolution(Record):
+    """Exact law of the first-order error at one point: symmetric and shortest interval, yield, share outside."""
+
+    mean: float
+    sigma: float
+    lower: float
+    upper: float
+    shortest: Interval
+    yield_: float | None = None
+    outside_ppm: float | None = None
+
+
+@dataclass(frozen=True, slots=True)
 class Point(Record):
     """One operating point with what every method says of it."""
 
@@ -285,6 +298,7 @@ class Point(Record):
     worst_case: WorstCase | None = None
     rss: Rss | None = None
     monte_carlo: PointMonteCarlo | None = None
+    convolution: PointConvolution | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -362,6 +376,7 @@ class Verdict(Record):
     worst_case: str | None = None
     rss: str | None = None
     monte_carlo: str | None = None
+    convolution: str | None = None
 
 
 @dataclass(frozen=True, slots=True)

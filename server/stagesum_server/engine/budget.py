@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -14,6 +15,7 @@ from stagesum_schemas.records import (
     Interval,
     MonteCarlo,
     Point,
+    PointConvolution,
     PointMonteCarlo,
     Rss,
     Service,
@@ -21,14 +23,16 @@ from stagesum_schemas.records import (
     WorstCase,
 )
 
-from stagesum_server.engine import correlation, monte_carlo, rss, sensitivity, verdict, worst_case
+from stagesum_server.engine import correlation, exact, monte_carlo, rss, sensitivity, verdict, worst_case
 from stagesum_server.engine.contributions import contributions, variance_parts
+from stagesum_server.engine.convolution import NoExactLawError
 from stagesum_server.engine.sampling import Sampler
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from stagesum_server.engine.chain import Model
+    from stagesum_server.engine.sum_law import SumLaw
 
     Array = NDArray[np.float64]
 
@@ -50,6 +54,17 @@ class _Analysis:
     outside: Array | None
     tally: monte_carlo.Tally | None
     stable: tuple[bool, float] | None
+    laws: list[SumLaw] | None
+    no_laws: str
+
+    @cached_property
+    def outside_exactly(self) -> Array | None:
+        """Share outside the limit at every point by the exact laws."""
+        limit = self.model.limit
+        if self.laws is None or limit is None:
+            return None
+        ends = zip(self.laws, limit.lower, limit.upper, strict=True)
+        return np.array([law.outside(float(lower), float(upper)) for law, lower, upper in ends])
 
 
 def compute(model: Model, version: str, threads: int = 1) -> Budget:
@@ -72,9 +87,13 @@ def compute(model: Model, version: str, threads: int = 1) -> Budget:
         variance_parts=variance_parts(model, found.rss, governing),
         verdict=_verdict(found, together),
         checks=_checks(found, points),
-        assumptions=model.assumptions,
+        assumptions=(*model.assumptions, *_notes(found)),
         cautions=CAUTIONS,
     )
+
+
+def _notes(found: _Analysis) -> tuple[str, ...]:
+    return (f"Convolution is left out: {found.no_laws}.",) if found.no_laws else ()
 
 
 def _analyse(model: Model, threads: int) -> _Analysis:
@@ -86,7 +105,28 @@ def _analyse(model: Model, threads: int) -> _Analysis:
     tally, stable = None, None
     if "monte_carlo" in model.methods:
         tally, stable = _simulate(model, clusters, extremes, propagation, threads)
-    return _Analysis(model, S, extremes, propagation, share, tally, stable)
+    laws, no_laws = _convolve(model, S, clusters)
+    return _Analysis(model, S, extremes, propagation, share, tally, stable, laws, no_laws)
+
+
+class MethodRefusedError(ValueError):
+    """A method that was named, and can't be had for this chain."""
+
+    def __init__(self, method: str, detail: str) -> None:
+        super().__init__(detail)
+        self.method, self.detail = method, detail
+
+
+def _convolve(model: Model, S: Array, clusters: tuple[correlation.Cluster, ...]) -> tuple[list[SumLaw] | None, str]:
+    """Exact laws at all points, or the reason why there are none; refused where the method was named."""
+    if "convolution" not in model.methods:
+        return None, ""
+    try:
+        return exact.error_laws(model, S, clusters), ""
+    except NoExactLawError as error:
+        if model.methods_named or (model.limit and "convolution" in model.limit.by_named):
+            raise MethodRefusedError("convolution", str(error)) from None
+        return None, str(error)
 
 
 def _simulate(
@@ -125,6 +165,7 @@ def _point(found: _Analysis, p: int) -> Point:
         worst_case=_worst_case(found, p) if "worst_case" in model.methods else None,
         rss=_rss(found, p) if "rss" in model.methods else None,
         monte_carlo=_point_monte_carlo(found.tally, model, p) if found.tally else None,
+        convolution=_point_convolution(found, p) if found.laws else None,
     )
 
 
@@ -175,6 +216,19 @@ def _point_monte_carlo(tally: monte_carlo.Tally, model: Model, p: int) -> PointM
     )
 
 
+def _point_convolution(found: _Analysis, p: int) -> PointConvolution:
+    law = (found.laws or [])[p]
+    share = float(found.outside_exactly[p]) if found.outside_exactly is not None else None
+    return PointConvolution(
+        law.mean,
+        law.sigma,
+        *law.interval(found.model.coverage),
+        shortest=Interval(*law.shortest(found.model.coverage)),
+        yield_=None if share is None else 1.0 - share,
+        outside_ppm=None if share is None else 1e6 * share,
+    )
+
+
 def _monte_carlo(found: _Analysis, governing: int) -> MonteCarlo | None:
     tally, asked = found.tally, found.model.monte_carlo
     if tally is None:
@@ -202,6 +256,8 @@ def _verdict(found: _Analysis, together: MonteCarlo | None) -> Verdict | None:
         said["worst_case"] = verdict.of_worst_case(found.extremes, model.limit)
     if "rss" in model.methods and found.outside is not None:
         said["rss"] = verdict.of_rss(found.outside, model.limit)
+    if found.outside_exactly is not None:
+        said["convolution"] = verdict.of_convolution(found.outside_exactly, model.limit)
     if together is not None and found.tally is not None:
         interval = monte_carlo.clopper_pearson(found.tally.inside_all, found.tally.trials)
         said["monte_carlo"] = verdict.of_monte_carlo(interval, model.limit)
@@ -209,7 +265,11 @@ def _verdict(found: _Analysis, together: MonteCarlo | None) -> Verdict | None:
 
 
 def _checks(found: _Analysis, points: tuple[Point, ...]) -> Checks | None:
-    if found.tally is None or "rss" not in found.model.methods:
+    if "rss" not in found.model.methods:
         return None
-    against = [Interval(point.monte_carlo.lower, point.monte_carlo.upper) for point in points if point.monte_carlo]
-    return verdict.check_rss(found.model, found.rss, against, found.tally.trials)
+    exactly = [Interval(point.convolution.lower, point.convolution.upper) for point in points if point.convolution]
+    if exactly:
+        return verdict.check_rss(found.model, found.rss, "convolution", exactly, None)
+    drawn = [Interval(point.monte_carlo.lower, point.monte_carlo.upper) for point in points if point.monte_carlo]
+    trials = found.tally.trials if found.tally else None
+    return verdict.check_rss(found.model, found.rss, "monte_carlo", drawn, trials) if drawn else None

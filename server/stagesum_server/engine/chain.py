@@ -82,6 +82,7 @@ class Limit:
     upper: Array
     target: float
     by: tuple[str, ...]
+    by_named: tuple[str, ...]
 
 
 @dataclass(frozen=True)
@@ -114,6 +115,7 @@ class Model:
     span: float | None
     limit: Limit | None
     methods: tuple[str, ...]
+    methods_named: bool
     coverage: float
     coverage_factor: float | None
     monte_carlo: MonteCarloSpec

@@ -129,7 +129,7 @@ class Transform:
 
         Without tilt and with symmetric terms only, the ratio is real.
         """
-        z = theta + 1j * t
+        z: Complex = theta + 1j * t.astype(np.complex128)
         v = self.normal_variance
         M = np.exp(-0.5 * v * t * t) * (np.exp(1j * v * theta * t) if theta and v else 1.0)
         log_scale = 0.5 * v * theta * theta
@@ -272,7 +272,7 @@ def _cut_normals(cuts: list[Cut], theta: float, t: Array) -> Array | Complex:
     if theta == 0.0 and np.all((np.abs(klo + khi) < 1e-12) & (khi > 0.5)):
         M: Array | Complex = _symmetric_at_zero(s * t, khi, content)
     else:
-        M = _tilted_cut(theta + 1j * t, half, s, klo, khi, content)
+        M = _tilted_cut(theta + 1j * t.astype(np.complex128), half, s, klo, khi, content)
     return _powers(M, np.array(list(merged.values())))
 
 
@@ -300,9 +300,7 @@ def _tilted_cut(z: Complex, half: Array, s: Array, klo: Array, khi: Array, conte
     return np.where(narrow, _cut_by_quadrature(np.where(small, z, 0.0), half, s, klo, khi, content, r), M)
 
 
-def _cut_by_quadrature(
-    z: Complex, half: Array, s: Array, klo: Array, khi: Array, content: Array, r: Array
-) -> Complex:
+def _cut_by_quadrature(z: Complex, half: Array, s: Array, klo: Array, khi: Array, content: Array, r: Array) -> Complex:
     total = np.zeros(np.broadcast_shapes(z.shape, half.shape), dtype=np.complex128)
     if not np.any(khi - klo < 1.0):
         return total

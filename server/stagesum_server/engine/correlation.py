@@ -219,7 +219,7 @@ def pearson(first: Law, second: Law, rho: float) -> float:
         return rho
     if first.family == second.family and (rho == 1.0 or (rho == -1.0 and first.symmetric)):
         return rho
-    z, w = _score_nodes(first.kinks + second.kinks)
+    z, w = score_nodes(first.kinks + second.kinks)
     a, b = first.from_scores(z) - first.mean, second.from_scores(z) - second.mean
     mirrored = second.from_scores(-z) - second.mean
     whole = float(np.sum(w * a * (b if rho >= 0.0 else mirrored)))
@@ -231,7 +231,7 @@ def pearson(first: Law, second: Law, rho: float) -> float:
     return value / (first.sigma * second.sigma)
 
 
-def _score_nodes(kinks: tuple[float, ...]) -> tuple[Array, Array]:
+def score_nodes(kinks: tuple[float, ...]) -> tuple[Array, Array]:
     """Gauss-Legendre nodes over the normal score, in panels that end at the laws' kinks, and normal weights."""
     edges = np.unique(np.concatenate([np.linspace(-SCORE_LIMIT, SCORE_LIMIT, 73), special.ndtri(np.array(kinks))]))
     edges = edges[np.isfinite(edges)]

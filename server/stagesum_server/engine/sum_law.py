@@ -14,6 +14,7 @@ from __future__ import annotations
 
 import math
 from abc import ABC, abstractmethod
+from functools import cached_property
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -33,6 +34,9 @@ SMALL_PROBABILITY = 1e-3  # below it the tilted series is used
 TILT_STEP = 0.5  # tilts are rounded to so many 1/sigma, so that their transforms can be kept
 CHUNK = 1 << 20
 SEARCH_STEPS = 100
+SHORTEST_PLACES = 9  # shares below the shortest interval that are tried before the best is refined
+BRACKET_RANGE = 1e-9  # probabilities nearer to 0 or 1 are searched over the whole support
+BRACKETS = 256  # cells of the table that brackets quantiles
 
 
 class SumLaw(ABC):
@@ -59,13 +63,17 @@ class SumLaw(ABC):
 
     def quantile(self, p: float) -> float:
         """Smallest x with P(Y <= x) >= p, for 0 < p < 1."""
-        if p <= 0.5:
-            return _solve(lambda x: float(self.cdf(np.array([x]))[0]), p, self.lower, self.upper, rising=True)
-        return self.upper_quantile(1.0 - p)
+        if p > 0.5:
+            return self.upper_quantile(1.0 - p)
+        return _solve(lambda x: float(self.cdf(np.array([x]))[0]), p, *self.bracket(p), rising=True)
 
     def upper_quantile(self, q: float) -> float:
         """The x that a share ``q`` of the values exceeds."""
-        return _solve(lambda x: float(self.sf(np.array([x]))[0]), q, self.lower, self.upper, rising=False)
+        return _solve(lambda x: float(self.sf(np.array([x]))[0]), q, *self.bracket(1.0 - q), rising=False)
+
+    def bracket(self, p: float) -> tuple[float, float]:
+        """An interval that holds the quantile of ``p``."""
+        return self.lower, self.upper
 
     def interval(self, coverage: float) -> tuple[float, float]:
         """Probabilistically symmetric coverage interval (JCGM 101:2008, 3.15)."""
@@ -88,10 +96,17 @@ class SumLaw(ABC):
             low, high = ends(below)
             return high - low
 
-        places = np.linspace(0.0, missing, 9)
+        places = np.linspace(0.0, missing, SHORTEST_PLACES)
         best = int(np.argmin([width(float(place)) for place in places]))
-        low, high = places[max(best - 1, 0)], places[min(best + 1, 8)]
+        if 2 * best == SHORTEST_PLACES - 1 and self.mirrored:
+            return ends(0.5 * missing)
+        low, high = places[max(best - 1, 0)], places[min(best + 1, SHORTEST_PLACES - 1)]
         return ends(_golden(width, float(low), float(high)))
+
+    @property
+    def mirrored(self) -> bool:
+        """Whether the law is known to be its own mirror image."""
+        return False
 
 
 def _golden(f: Callable[[float], float], low: float, high: float) -> float:
@@ -99,7 +114,7 @@ def _golden(f: Callable[[float], float], low: float, high: float) -> float:
     ratio = 0.5 * (math.sqrt(5.0) - 1.0)
     a, b = high - ratio * (high - low), low + ratio * (high - low)
     fa, fb = f(a), f(b)
-    for _ in range(24):
+    for _ in range(20):
         if fa <= fb:
             high, b, fb = b, a, fa
             a = high - ratio * (high - low)
@@ -114,15 +129,19 @@ def _golden(f: Callable[[float], float], low: float, high: float) -> float:
 def _solve(f: Callable[[float], float], target: float, low: float, high: float, *, rising: bool) -> float:
     """Where a monotone probability f passes ``target``, by the Illinois method on log f, safe at jumps."""
     goal, sign = math.log(target), 1.0 if rising else -1.0
-    f_low, f_high = (-800.0, 0.0) if rising else (0.0, -800.0)
-    g_low, g_high = sign * (f_low - goal), sign * (f_high - goal)
-    side = 0
+
+    def distance(x: float) -> float:
+        value = f(x)
+        return sign * ((math.log(value) if value > 0.0 else -800.0) - goal)
+
+    g_low, g_high, side = distance(low), distance(high), 0
+    if g_low >= 0.0 or g_high <= 0.0:
+        return low if g_low >= 0.0 else high
     for step in range(SEARCH_STEPS):
-        x = low - g_low * (high - low) / (g_high - g_low) if step % 3 else 0.5 * (low + high)
+        x = 0.5 * (low + high) if step % 4 == 3 else low - g_low * (high - low) / (g_high - g_low)
         if not low < x < high:
             break
-        value = f(x)
-        g = sign * ((math.log(value) if value > 0.0 else -800.0) - goal)
+        g = distance(x)
         if abs(g) < 4e-15 or high - low <= 4e-16 * max(abs(low), abs(high)):
             return x
         if g < 0.0:
@@ -195,11 +214,28 @@ class SeriesLaw(SumLaw):
         self.transform, self.A = transform, transform.half_width
         self.middle, self.mean, self.sigma = offset + transform.centre, mean, sigma
         self.lower, self.upper = self.middle - self.A, self.middle + self.A
-        self.t = (math.pi / self.A) * np.arange(K + 1)
+        self.t = (math.pi / self.A) * np.arange(K + 1, dtype=np.float64)
         self.M, _ = transform(0.0, self.t)
         self._tilted: dict[int, tuple[Array, Complex, float]] = {}
 
-    def cdf(self, x: Array) -> Array:  # noqa: D102 - said by SumLaw
+    @cached_property
+    def _table(self) -> tuple[Array, Array]:
+        """Places and cdf that bracket quantiles; what rounding turned round is put straight."""
+        x, F, _ = self.grid(BRACKETS)
+        return np.append(x, self.upper), np.append(np.maximum.accumulate(F), 1.0)
+
+    def bracket(self, p: float) -> tuple[float, float]:  # noqa: D102 - said by SumLaw, as below
+        if not BRACKET_RANGE <= p <= 1.0 - BRACKET_RANGE:
+            return self.lower, self.upper
+        x, F = self._table
+        right = int(np.searchsorted(F, p))
+        return float(x[max(right - 2, 0)]), float(x[min(right + 1, BRACKETS)])
+
+    @property
+    def mirrored(self) -> bool:  # noqa: D102
+        return not np.iscomplexobj(self.M)
+
+    def cdf(self, x: Array) -> Array:  # noqa: D102
         return self._probability(np.asarray(x, dtype=np.float64), -1.0)
 
     def sf(self, x: Array) -> Array:  # noqa: D102
@@ -227,7 +263,7 @@ class SeriesLaw(SumLaw):
 
     def grid(self, points: int) -> tuple[Array, Array, Array]:
         """Places, cdf and density at ``points`` equal steps over the support, by one inverse transform each."""
-        j = np.arange(points)
+        j = np.arange(points, dtype=np.float64)
         n = self.t.size - 1
         c = self.M[1:] / (1j * self.t[1:])
         folded = np.zeros(points, dtype=np.complex128)
@@ -276,7 +312,7 @@ class SeriesLaw(SumLaw):
                 if bound == 0.0 or (power > 0.0 and math.log(bound / power) < allowed):
                     break
                 K *= 2
-            t = step * np.arange(K + 1)
+            t = step * np.arange(K + 1, dtype=np.float64)
             R, _ = self.transform(theta, t)
             self._tilted[key] = t, np.asarray(R if theta > 0.0 else np.conj(R), dtype=np.complex128), log_scale
         return self._tilted[key]

@@ -42,6 +42,16 @@ def of_monte_carlo(interval: tuple[float, float], limit: Limit) -> str:
     return FAIL if interval[1] < limit.target else UNDECIDED
 
 
+def of_convolution(share_outside: Array, limit: Limit) -> str:
+    """Pass if the shares outside at all points add up to no more than is permitted (a unit must pass everywhere).
+
+    Where each point alone keeps within it but their sum does not, the joint yield is open: undecided.
+    """
+    if share_outside.sum() <= _permitted(limit):
+        return PASS
+    return UNDECIDED if np.all(share_outside <= _permitted(limit)) else FAIL
+
+
 def _permitted(limit: Limit) -> float:
     """Share that may lie outside; the rounding of 1 - target is allowed for."""
     return (1.0 - limit.target) * (1.0 + 1e-12)
@@ -49,9 +59,10 @@ def _permitted(limit: Limit) -> float:
 
 def overall(said: dict[str, str], limit: Limit) -> Verdict:
     """Put the methods' verdicts together: those in ``limit.by`` decide."""
-    deciding = [said[method] for method in limit.by]
+    by = tuple(method for method in limit.by if method in said)  # a method may not be had for a chain
+    deciding = [said[method] for method in by]
     together = PASS if all(v == PASS for v in deciding) else FAIL if FAIL in deciding else UNDECIDED
-    return Verdict(overall=together, by=limit.by, yield_=limit.target, **said)
+    return Verdict(overall=together, by=by, yield_=limit.target, **said)
 
 
 def governing_point(limit: Limit | None, rss: Propagation, extremes: Extremes) -> int:
@@ -64,11 +75,11 @@ def governing_point(limit: Limit | None, rss: Propagation, extremes: Extremes) -
         return int(np.argmax(np.nan_to_num(farthest / half, nan=0.0, posinf=np.inf)))
 
 
-def check_rss(model: Model, rss: Propagation, against: list[Interval], trials: int) -> Checks:
-    """Compare rss with Monte Carlo (JCGM 101:2008, 8.2): both interval ends within the numerical tolerance.
+def check_rss(model: Model, rss: Propagation, method: str, against: list[Interval], trials: int | None) -> Checks:
+    """Compare rss with another method (JCGM 101:2008, 8.2): both interval ends within the numerical tolerance.
 
-    The ends of the Monte Carlo interval carry noise of their own, sqrt(p (1 - p) / trials) / density, taken at a
-    normal law's quantile; where it hides the answer, ``rss_holds`` is left open.
+    With ``trials``, the other interval's ends carry noise of their own, sqrt(p (1 - p) / trials) / density, taken at
+    a normal law's quantile; where it hides the answer, ``rss_holds`` is left open.
     """
     differences = [
         max(abs(rss.lower[p] - interval.lower), abs(rss.upper[p] - interval.upper))
@@ -79,9 +90,9 @@ def check_rss(model: Model, rss: Propagation, against: list[Interval], trials: i
         d / t if t > 0.0 else (math.inf if d > 0.0 else 0.0) for d, t in zip(differences, tolerances, strict=True)
     ]
     p = int(np.argmax(excess))
-    noise = 2.0 * _quantile_noise(float(rss.sigma[p]), model.coverage, trials)
-    holds, detail = _holds(differences[p], tolerances[p], noise)
-    return Checks("monte_carlo", tolerances[p], float(differences[p]), p, detail, holds)
+    noise = 2.0 * _quantile_noise(float(rss.sigma[p]), model.coverage, trials) if trials else 0.0
+    holds, detail = _holds(method, differences[p], tolerances[p], noise)
+    return Checks(method, tolerances[p], float(differences[p]), p, detail, holds)
 
 
 def _quantile_noise(sigma: float, coverage: float, trials: int) -> float:
@@ -91,9 +102,9 @@ def _quantile_noise(sigma: float, coverage: float, trials: int) -> float:
     return sigma * math.sqrt(tail * (1.0 - tail) / trials) * math.sqrt(2.0 * math.pi) * math.exp(0.5 * z * z)
 
 
-def _holds(difference: float, tolerance: float, noise: float) -> tuple[bool | None, str]:
+def _holds(method: str, difference: float, tolerance: float, noise: float) -> tuple[bool | None, str]:
     if difference + noise <= tolerance:
-        return True, "rss and Monte Carlo agree within the numerical tolerance (JCGM 101:2008, 8.2)"
+        return True, f"rss and {method} agree within the numerical tolerance (JCGM 101:2008, 8.2)"
     if difference - noise > tolerance:
-        return False, "rss differs from Monte Carlo by more than the numerical tolerance (JCGM 101:2008, 8.2)"
+        return False, f"rss differs from {method} by more than the numerical tolerance (JCGM 101:2008, 8.2)"
     return None, "too few trials to tell: the noise of the Monte Carlo interval is not small against the tolerance"

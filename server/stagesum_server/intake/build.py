@@ -6,6 +6,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 from scipy import special
+from stagesum_schemas.records import METHODS
 from stagesum_schemas.units import DIMENSIONLESS
 
 from stagesum_server.engine import calibration, correlation
@@ -39,8 +40,9 @@ def build(request: BudgetRequest, limits: Limits) -> Model:
     sources = _sources(request, chain, faults, told)
     correlations = _correlations(request, sources, faults)
     node = _node(request, faults)
+    methods = request.methods or METHODS
     coverage = _coverage(request, told)
-    limit = _limit(request, chain, node, coverage, faults, told)
+    limit = _limit(request, methods, chain, node, coverage, faults, told)
     faults.refuse()
     good = tuple(made for made in sources if made is not None)
     _note_assumptions(request, good, told)
@@ -60,7 +62,8 @@ def build(request: BudgetRequest, limits: Limits) -> Model:
         unit=chain.units[node].symbol,
         span=float(chain.F[node]) or None,
         limit=limit,
-        methods=request.methods,
+        methods=methods,
+        methods_named=request.methods is not None,
         coverage=coverage,
         coverage_factor=request.coverage_factor,
         monte_carlo=request.monte_carlo,
@@ -167,7 +170,13 @@ def _coverage(request: BudgetRequest, told: Assumptions) -> float:
 
 
 def _limit(
-    request: BudgetRequest, chain: Frame, node: int, coverage: float, faults: Faults, told: Assumptions
+    request: BudgetRequest,
+    methods: tuple[str, ...],
+    chain: Frame,
+    node: int,
+    coverage: float,
+    faults: Faults,
+    told: Assumptions,
 ) -> Limit | None:
     """Permitted error at each operating point: the stated forms added up."""
     spec = request.limit
@@ -185,11 +194,11 @@ def _limit(
     widening = share["of_span"] * chain.F[node] + share["of_reading"] * np.abs(v)
     if spec.yield_ is None:
         told.note(f"the yield to reach is the coverage, {coverage:.6g}")
-    by = spec.by or tuple(m for m in request.methods if m != "worst_case") or request.methods
+    by = spec.by or tuple(m for m in methods if m != "worst_case") or methods
     for k, method in enumerate(spec.by or ()):
-        if method not in request.methods:
-            faults.add(f"#/limit/by/{k}", f"{method} is not among the methods asked for: {', '.join(request.methods)}")
-    return Limit(fixed_lower - widening, fixed_upper + widening, spec.yield_ or coverage, by)
+        if method not in methods:
+            faults.add(f"#/limit/by/{k}", f"{method} is not among the methods asked for: {', '.join(methods)}")
+    return Limit(fixed_lower - widening, fixed_upper + widening, spec.yield_ or coverage, by, spec.by or ())
 
 
 def _fixed_limit(spec: LimitSpec, chain: Frame, node: int, faults: Faults) -> tuple[float, float]:

@@ -184,10 +184,10 @@ class StudentT(Law):
         return np.asarray(self.m + self.s * special.stdtrit(self.dof, u))
 
     def cdf(self, x: Array) -> Array:  # noqa: D102
-        return special.stdtr(self.dof, (x - self.m) / self.s)
+        return np.asarray(special.stdtr(self.dof, (x - self.m) / self.s), dtype=np.float64)
 
     def sf(self, x: Array) -> Array:  # noqa: D102
-        return special.stdtr(self.dof, (self.m - x) / self.s)
+        return np.asarray(special.stdtr(self.dof, (self.m - x) / self.s), dtype=np.float64)
 
     def density(self, x: Array) -> Array:  # noqa: D102
         half = 0.5 * self.dof

@@ -1,0 +1,1 @@
+"""Web adapters: the only place where Flask lives."""
