@@ -11,7 +11,7 @@ from stagesum_schemas.fields import SHORT, nearest
 if TYPE_CHECKING:
     from marshmallow import ValidationError
 
-SUGGESTIONS = 20  # unknown members of one object that get a suggestion: searching near names takes time
+MOST_TOLD = 20  # unknown members of one object that are told one by one: searching near names takes time
 
 
 class RecordSchema(Schema):
@@ -35,9 +35,13 @@ class RecordSchema(Schema):
         if not isinstance(data, dict) or not isinstance(error.messages, dict):
             return
         known = self.members()
-        for count, name in enumerate(name for name in data if name not in known):
-            meant = nearest(name, known) if count < SUGGESTIONS else ""
-            error.messages[name] = [f"unknown member {name[:SHORT]!r}{meant or _known(known)}"]
+        unknown = [name for name in data if name not in known]
+        for name in unknown:  # marshmallow's own order of them changes from run to run
+            error.messages.pop(name, None)
+        for name in unknown[:MOST_TOLD]:
+            error.messages[name] = [f"unknown member {name[:SHORT]!r}{nearest(name, known) or _known(known)}"]
+        if len(unknown) > MOST_TOLD:
+            error.messages[unknown[MOST_TOLD]] = [f"{len(unknown) - MOST_TOLD} more members are unknown"]
 
     @classmethod
     def members(cls) -> list[str]:

@@ -73,6 +73,19 @@ class PointMonteCarloSchema(RecordSchema):
     yield_interval = ListOf("95 % interval of the yield (Clopper and Pearson)", StrictNumber("An end"), 2, 2)
 
 
+class PointConvolutionSchema(RecordSchema):
+    """Exact law of the first-order error at one point."""
+
+    record = records.PointConvolution
+    mean = number("Mean error, in the answer's unit")
+    sigma = number("Standard deviation, in the answer's unit")
+    lower = number("Lower end of the probabilistically symmetric interval, in the answer's unit")
+    upper = number("Upper end of the probabilistically symmetric interval, in the answer's unit")
+    shortest = Part("Shortest interval of the same coverage", IntervalSchema, required=True)
+    yield_ = StrictNumber("Expected share inside the limit", data_key="yield")
+    outside_ppm = StrictNumber("Expected share outside the limit, in ppm")
+
+
 class PointSchema(RecordSchema):
     """One operating point."""
 
@@ -84,6 +97,7 @@ class PointSchema(RecordSchema):
     worst_case = Part("Worst case", WorstCaseSchema)
     rss = Part("Root sum of squares", RssSchema)
     monte_carlo = Part("Monte Carlo", PointMonteCarloSchema)
+    convolution = Part("Convolution", PointConvolutionSchema)
 
 
 class HistogramSchema(RecordSchema):
@@ -105,7 +119,9 @@ class MonteCarloAnswerSchema(RecordSchema):
     converged = StrictBoolean("Whether an adaptive run became stable")
     tolerance = StrictNumber("Tolerance of an adaptive run, in the answer's unit")
     joint_yield = StrictNumber("Share of trials inside the limit at every point")
-    joint_yield_interval = ListOf("95 % interval of the joint yield (Clopper and Pearson)", StrictNumber("An end"), 2, 2)
+    joint_yield_interval = ListOf(
+        "95 % interval of the joint yield (Clopper and Pearson)", StrictNumber("An end"), 2, 2
+    )
 
 
 class LargestSchema(RecordSchema):
@@ -157,6 +173,7 @@ class VerdictSchema(RecordSchema):
     worst_case = Word("Verdict of the worst case", OUTCOMES)
     rss = Word("Verdict of rss", OUTCOMES)
     monte_carlo = Word("Verdict of Monte Carlo", OUTCOMES)
+    convolution = Word("Verdict of convolution", OUTCOMES)
 
 
 class ChecksSchema(RecordSchema):

@@ -15,6 +15,8 @@ if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
 
 SHORT = 60  # characters of a value that a message repeats
+MOST_WRONG = 50  # items of one list that are told to be wrong
+LEAST, MOST = 1e-30, 1e30  # sizes of a figure; products of many stay far from the ends of double precision
 
 
 def found(value: Any) -> str:
@@ -74,6 +76,12 @@ class QuantityField(Told):
     right = 'write a number and a unit, such as "150 uV", or a plain number'
 
     def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> Quantity:
+        quantity = self._read(value)
+        if quantity.value and not LEAST <= abs(quantity.value) <= MOST:
+            raise ValidationError(f"found {found(value)}; write 0 or a number from {LEAST:g} to {MOST:g} in size")
+        return quantity
+
+    def _read(self, value: Any) -> Quantity:
         if isinstance(value, str):
             try:
                 return parse_quantity(value)
@@ -202,18 +210,16 @@ class StrictText(Told, fields.String):
 
 
 class Word(Told, fields.String):
-    """One of a few words; ``later`` are words that will be known one day."""
+    """One of a few words."""
 
-    def __init__(self, about: str, words: Sequence[str], later: Sequence[str] = (), **options: Any) -> None:
-        self.words, self.later = tuple(words), tuple(later)
+    def __init__(self, about: str, words: Sequence[str], **options: Any) -> None:
+        self.words = tuple(words)
         self.right = f"write one of {', '.join(self.words)}"
         super().__init__(about, metadata={"enum": list(self.words)}, **options)
 
     def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> str:
         if not isinstance(value, str):
             raise self.wrong(value)
-        if value in self.later:
-            raise ValidationError(f"{value} is not available yet; {self.right}")
         if value not in self.words:
             raise ValidationError(f"found {found(value)}; {self.right}{nearest(value, self.words)}")
         return value
@@ -223,7 +229,7 @@ class Word(Told, fields.String):
 # Lists and objects
 
 
-class ListOf(Told, fields.List):
+class ListOf(Told, fields.List[Any]):
     """A list of bounded length; with ``distinct`` no item stands twice. The length is looked at first."""
 
     def __init__(
@@ -251,10 +257,25 @@ class ListOf(Told, fields.List):
     def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> list[Any]:
         if not isinstance(value, list) or not self.shortest <= len(value) <= self.longest:
             raise self.wrong(value)
-        items: list[Any] = super()._deserialize(value, attr, data, **kwargs)
+        items = self._items(value)
         if self.distinct:
             self._refuse_repeated(items)
         return items
+
+    def _items(self, value: list[Any]) -> list[Any]:
+        """Load every item; after MOST_WRONG wrong ones the rest is not looked at."""
+        made: list[Any] = []
+        wrong: dict[int, Any] = {}
+        for i, item in enumerate(value):
+            try:
+                made.append(self.inner.deserialize(item))
+            except ValidationError as error:
+                wrong[i] = error.messages
+                if len(wrong) == MOST_WRONG:
+                    break
+        if wrong:
+            raise ValidationError(wrong)
+        return made
 
     @staticmethod
     def _refuse_repeated(items: list[Any]) -> None:
@@ -271,10 +292,10 @@ class Part(Told, fields.Nested):
     def __init__(self, about: str, schema: Any, **options: Any) -> None:
         super().__init__(about, nested=schema, **options)
 
-    def _deserialize(self, value: Any, attr: str | None, data: Any, **kwargs: Any) -> Any:
+    def _deserialize(self, value: Any, attr: str | None, data: Any, partial: Any = None, **kwargs: Any) -> Any:
         if not isinstance(value, dict):
             raise self.wrong(value)
-        return super()._deserialize(value, attr, data, **kwargs)
+        return super()._deserialize(value, attr, data, partial, **kwargs)
 
 
 class ByName(Told, fields.Dict):

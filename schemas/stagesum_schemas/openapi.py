@@ -37,7 +37,10 @@ PROBLEMS = {
     429: "Too many requests; Retry-After says when to come back.",
     503: "The service is busy; Retry-After says when to come back.",
 }
-EXAMPLE_FAULT = {"pointer": "#/stages/1/sources/0/max", "detail": "found '5 s', a figure in s; the units close with mV here"}
+EXAMPLE_FAULT = {
+    "pointer": "#/stages/1/sources/0/max",
+    "detail": "found '5 s', a figure in s; the units close with mV here",
+}
 HEADERS = {405: "Allow", 429: "Retry-After", 503: "Retry-After"}
 
 
@@ -52,9 +55,10 @@ def document() -> dict[str, Any]:
         info={"description": INTRODUCTION, "license": {"name": "MIT", "identifier": "MIT"}},
         servers=[{"url": "/"}],
     )
-    plugin.map_to_openapi_type(QuantityField, None, None)
-    plugin.map_to_openapi_type(UnitField, "string", None)
-    plugin.converter.add_attribute_function(_quantity)
+    converter: Any = plugin.converter  # untyped in apispec
+    converter.map_to_openapi_type(QuantityField, None, None)
+    converter.map_to_openapi_type(UnitField, "string", None)
+    converter.add_attribute_function(_quantity)
     for status, description in PROBLEMS.items():
         spec.components.response(f"Problem{status}", _problem(status, description))
     _add_budget(spec)

@@ -7,6 +7,7 @@ each faulty optional member is left out, and intake looks at what remains.
 
 from __future__ import annotations
 
+from itertools import accumulate
 from typing import TYPE_CHECKING, Any
 
 from marshmallow import ValidationError
@@ -40,12 +41,24 @@ def build(body: Any, limits: Limits) -> Model:
     """
     if not isinstance(body, dict):
         raise InvalidRequest((Fault("#", f"found {found(body)}; write an object, see /openapi.json"),))
+    _refuse_sizes(body, limits)
     try:
         request = SCHEMA.load(body)
     except ValidationError as error:
         form = faults_of(error.messages, body)
         raise InvalidRequest(form + _meaning(body, error.messages, limits)) from None
     return intake.build(request, limits)
+
+
+def _refuse_sizes(body: dict[str, Any], limits: Limits) -> None:
+    """Refuse at once what would take long only to be looked at."""
+    stages = body.get("stages")
+    stages = stages if isinstance(stages, list) else []
+    listed = [stage.get("sources") for stage in stages if isinstance(stage, dict)]
+    sources = sum(len(some) for some in listed if isinstance(some, list))
+    for what, count, most in (("stages", len(stages), limits.max_stages), ("sources", sources, limits.max_sources)):
+        if count > most:
+            raise InvalidRequest((Fault("#/stages", f"found {count} {what}; at most {most} are computed"),))
 
 
 def _meaning(body: dict[str, Any], messages: Any, limits: Limits) -> tuple[Fault, ...]:
@@ -63,11 +76,12 @@ def _meaning(body: dict[str, Any], messages: Any, limits: Limits) -> tuple[Fault
     return ()
 
 
-def _inside(pointer: str, places: list[str]) -> bool:
-    return any(pointer == place or pointer.startswith(f"{place}/") for place in places)
+def _inside(pointer: str, places: set[str]) -> bool:
+    """Whether a place or one that it is part of is among ``places``."""
+    return any(prefix in places for prefix in accumulate(pointer.split("/"), "{}/{}".format))
 
 
-def _without(body: dict[str, Any], messages: dict[str, Any]) -> tuple[dict[str, Any], list[str]] | None:
+def _without(body: dict[str, Any], messages: dict[str, Any]) -> tuple[dict[str, Any], set[str]] | None:
     """The body with faulty places replaced or left out, and those places; None where too much is faulty."""
     sources = _faulty_sources(messages.get("stages", {}))
     if sources is None or any(name not in body or name in NEEDED for name in messages if name != "stages"):
@@ -77,7 +91,7 @@ def _without(body: dict[str, Any], messages: dict[str, Any]) -> tuple[dict[str, 
         dropped.add("correlations")  # may two sources be correlated? that depends on how each varies
     sound = {name: value for name, value in body.items() if name not in dropped}
     sound["stages"] = _with_placeholders(body["stages"], sources)
-    places = [f"#/{member(name)}" for name in dropped] + [f"#/stages/{i}/sources/{j}" for i, j in sources]
+    places = {f"#/{member(name)}" for name in dropped} | {f"#/stages/{i}/sources/{j}" for i, j in sources}
     return sound, places
 
 

@@ -28,7 +28,7 @@ class Settings:
     """All settings; each has a default."""
 
     max_body_bytes: int = 16 * MEBIBYTE
-    limits: Limits = Limits()
+    limits: Limits = field(default_factory=Limits)
     threads: int = field(default_factory=_processors)
 
     @classmethod

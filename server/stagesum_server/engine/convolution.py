@@ -17,13 +17,14 @@ from stagesum_server.engine.hard_sums import (
     TooManyAtomsError,
     merge_atoms,
 )
-from stagesum_server.engine.sum_law import MOST, SeriesLaw, SingleLaw, SumLaw, frequencies_needed
+from stagesum_server.engine.sum_law import MANY, MOST, TOLERANCE, SeriesLaw, SingleLaw, SumLaw, frequencies_needed
 
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     Array = NDArray[np.float64]
 
+MOST_CONDITIONED = 3  # sources of a sum that is taken apart: each costs a hundredfold
 NEGLIGIBLE = 1e-14  # terms narrower than this share of the sum's sigma only shift it
 
 
@@ -54,9 +55,12 @@ def sum_law(terms: list[Term], offset: float = 0.0, paths: tuple[Path, ...] = ()
         return _with_student(heavy, kept, offset, paths, sigma)
     transform = Transform(kept, paths)
     K = frequencies_needed(transform)
-    if K <= MOST:
+    few = len(kept) + len(paths) <= MOST_CONDITIONED
+    if K <= (MANY if few else MOST):
         mean = offset + math.fsum(t.coefficient * t.law.mean for t in kept) + sum(path.mean for path in paths)
         return SeriesLaw(transform, offset, mean, sigma, K)
+    if not few and not any(isinstance(t.law, laws.TwoPoint) for t in kept) and not paths:
+        raise NoExactLawError(f"its series falls too slowly for an error of {TOLERANCE:g}; Monte Carlo is the method")
     return _hard(kept, offset, paths)
 
 

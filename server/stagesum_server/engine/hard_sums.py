@@ -19,8 +19,10 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
 
 MOST_ATOMS = 1 << 16
-PANELS = 4  # between two breaks of a conditioned law
-_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(20)
+_NODES, _WEIGHTS = np.polynomial.legendre.leggauss(24)
+# the same on [0, 1], crowded towards the ends: v = (1 - cos(pi u)) / 2
+_SHARE = 0.5 * (1.0 - np.cos(0.5 * math.pi * (1.0 + _NODES)))
+_SHARE_WEIGHTS = 0.25 * math.pi * _WEIGHTS * np.sin(0.5 * math.pi * (1.0 + _NODES))
 SCALE_STEP = 0.25  # of the trapezoidal rule over the logarithm of chi-squared: its error is exp(-pi^2 / step)
 
 
@@ -114,10 +116,15 @@ class ConditionedLaw(SumLaw):
         self.wide, self.rest = wide, rest
         self.lower, self.upper = wide.lower + rest.lower, wide.upper + rest.upper
         self.mean, self.sigma = wide.mean + rest.mean, math.hypot(wide.sigma, rest.sigma)
-        inner = rest.breaks if isinstance(rest, SingleLaw) else np.array([rest.mean])
         spread = rest.mean + rest.sigma * np.array([-12.0, -8.0, -5.0, -2.5, 0.0, 2.5, 5.0, 8.0, 12.0])
+        inner = rest.breaks if isinstance(rest, SingleLaw | ConditionedLaw) else spread
         ends = np.array([rest.lower, rest.upper])
-        self._rest_breaks = np.unique(np.clip(np.concatenate([inner, ends, spread]), rest.lower, rest.upper))
+        self._rest_breaks = np.unique(np.clip(np.concatenate([inner, ends]), rest.lower, rest.upper))
+
+    @property
+    def breaks(self) -> Array:
+        """Places where the density bends: sums of both laws' breaks."""
+        return np.unique((self.wide.breaks[:, None] + self._rest_breaks).ravel())
 
     def sf(self, x: Array) -> Array:  # noqa: D102
         return np.array([self._one(float(value), 1.0) for value in np.atleast_1d(x)])
@@ -141,11 +148,8 @@ class ConditionedLaw(SumLaw):
         """Nodes and weights over [low, high], in panels between the breaks of both laws."""
         breaks = np.concatenate([self.wide.breaks, x - self._rest_breaks])
         edges = np.unique(np.concatenate([[low, high], breaks[(breaks > low) & (breaks < high)]]))
-        angles = math.pi * (np.arange(PANELS)[:, None] + 0.5 * (1.0 + _NODES)) / PANELS
-        share, slope = 0.5 * (1.0 - np.cos(angles)).ravel(), 0.5 * np.sin(angles).ravel()
-        weight = slope * np.tile(0.5 * _WEIGHTS * math.pi / PANELS, PANELS)
         width = np.diff(edges)[:, None]
-        return (edges[:-1, None] + width * share).ravel(), (width * weight).ravel()
+        return (edges[:-1, None] + width * _SHARE).ravel(), (width * _SHARE_WEIGHTS).ravel()
 
 
 class ScaleMixture(SumLaw):

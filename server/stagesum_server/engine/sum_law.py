@@ -29,7 +29,7 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
 
 TOLERANCE = 1e-15  # of the truncated series: absolute without tilt, relative with it
-FEWEST, MOST = 64, 1 << 17  # frequencies
+FEWEST, MANY, MOST = 64, 1 << 13, 1 << 18  # frequencies: at least, more than is fast, at most
 SMALL_PROBABILITY = 1e-3  # below it the tilted series is used
 TILT_STEP = 0.5  # tilts are rounded to so many 1/sigma, so that their transforms can be kept
 CHUNK = 1 << 20
@@ -86,6 +86,8 @@ class SumLaw(ABC):
         Where the law is its own mirror image and has one peak this is the symmetric interval.
         """
         missing = 1.0 - coverage
+        if self.one_peak_in_the_middle:
+            return self.interval(coverage)
 
         def ends(below: float) -> tuple[float, float]:
             low = self.lower if below <= 0.0 else self.quantile(below)
@@ -98,14 +100,12 @@ class SumLaw(ABC):
 
         places = np.linspace(0.0, missing, SHORTEST_PLACES)
         best = int(np.argmin([width(float(place)) for place in places]))
-        if 2 * best == SHORTEST_PLACES - 1 and self.mirrored:
-            return ends(0.5 * missing)
         low, high = places[max(best - 1, 0)], places[min(best + 1, SHORTEST_PLACES - 1)]
         return ends(_golden(width, float(low), float(high)))
 
     @property
-    def mirrored(self) -> bool:
-        """Whether the law is known to be its own mirror image."""
+    def one_peak_in_the_middle(self) -> bool:
+        """Whether the law is known to be its own mirror image with a single peak."""
         return False
 
 
@@ -186,6 +186,10 @@ class SingleLaw(SumLaw):
         return super().upper_quantile(q) if self.c > 0.0 else self.quantile(1.0 - q)
 
     @property
+    def one_peak_in_the_middle(self) -> bool:  # noqa: D102
+        return self.law.symmetric and self.law.shape not in ("arcsine", "two_point")
+
+    @property
     def breaks(self) -> Array:
         """Places where the density jumps or bends, the ends of the support included."""
         inner = self.law.quantile(np.array([0.0, *self.law.kinks, 1.0])) if self.law.bounded else np.array([])
@@ -193,7 +197,7 @@ class SingleLaw(SumLaw):
 
 
 def frequencies_needed(transform: Transform) -> int:
-    """How many frequencies the untilted series takes, MOST + 1 where it is too slow.
+    """How many frequencies the untilted series takes, 2 MOST where it is too slow.
 
     The sum of what is left out is at most envelope(t_K) / (pi m), m the power by which the envelope falls.
     """
@@ -204,7 +208,7 @@ def frequencies_needed(transform: Transform) -> int:
         if bound == 0.0 or (power > 0.0 and bound / (math.pi * power) < TOLERANCE) or bound < 1e-40:
             return K
         K *= 2
-    return MOST + 1
+    return 2 * MOST
 
 
 class SeriesLaw(SumLaw):
@@ -232,8 +236,11 @@ class SeriesLaw(SumLaw):
         return float(x[max(right - 2, 0)]), float(x[min(right + 1, BRACKETS)])
 
     @property
-    def mirrored(self) -> bool:  # noqa: D102
-        return not np.iscomplexobj(self.M)
+    def one_peak_in_the_middle(self) -> bool:  # noqa: D102
+        if np.iscomplexobj(self.M):
+            return False
+        _, _, f = self.grid(BRACKETS)
+        return bool(np.all(np.diff(f[: BRACKETS // 2 + 1]) >= -1e-9 * f.max()))
 
     def cdf(self, x: Array) -> Array:  # noqa: D102
         return self._probability(np.asarray(x, dtype=np.float64), -1.0)

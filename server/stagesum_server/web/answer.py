@@ -1,16 +1,33 @@
-"""Answers as bytes."""
+"""Answers as bytes, for callers that take JSON."""
 
 from __future__ import annotations
 
 import json
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
-from flask import Response
+from flask import Response, request
+from werkzeug.exceptions import NotAcceptable
 
 from stagesum_server.web.problems import UncomputableError
 
 if TYPE_CHECKING:
     from stagesum_schemas.records import Record
+
+JSON = "application/json"
+
+
+def only_json() -> None:
+    """Refuse a caller that doesn't take JSON; made for ``before_request``.
+
+    Raises
+    ------
+    NotAcceptable
+        Where the Accept header excludes it.
+
+    """
+    accepted = request.accept_mimetypes
+    if accepted and not accepted[JSON]:
+        raise NotAcceptable(f"answers are {JSON}; the Accept header excludes it")
 
 
 def answer(record: Record) -> Response:
@@ -23,9 +40,11 @@ def answer(record: Record) -> Response:
 
     """
     try:
-        text = json.dumps(record.to_dict(), allow_nan=False, separators=(",", ":"))
+        return json_answer(record.to_dict())
     except ValueError:
-        raise UncomputableError(
-            "the chain's numbers leave the range that can be computed with; check the units and magnitudes"
-        ) from None
-    return Response(text, content_type="application/json")
+        raise UncomputableError from None
+
+
+def json_answer(value: dict[str, Any]) -> Response:
+    """Answer 200 with compact JSON; a ValueError where a number isn't finite."""
+    return Response(json.dumps(value, allow_nan=False, separators=(",", ":")), content_type=JSON)

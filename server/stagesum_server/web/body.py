@@ -1,4 +1,4 @@
-"""Reading a body as JSON, strictly: RFC 8259 and nothing beside it; writing an answer."""
+"""Reading a body as JSON, strictly: RFC 8259 and nothing beside it."""
 
 from __future__ import annotations
 
@@ -6,13 +6,14 @@ import json
 import math
 from typing import TYPE_CHECKING, Any, NoReturn
 
-from flask import Response, request
-from werkzeug.exceptions import BadRequest, NotAcceptable, UnsupportedMediaType
+from flask import request
+from werkzeug.exceptions import BadRequest, UnsupportedMediaType
+
+from stagesum_server.web.answer import JSON
 
 if TYPE_CHECKING:
     from collections.abc import Callable
 
-JSON = "application/json"
 SHORT = 60
 
 
@@ -104,34 +105,3 @@ def _refuse_lone_surrogates(value: Any) -> None:
             left += item
         elif isinstance(item, str) and any("\ud800" <= letter <= "\udfff" for letter in item):
             raise BadRequest(f"found {item[:SHORT]!r}, which has half of a surrogate pair; it is no Unicode text")
-
-
-# ---------------------------------------------------------------------------------------------
-# Answers
-
-
-def only_json() -> None:
-    """Refuse a caller that doesn't take JSON; made for ``before_request``.
-
-    Raises
-    ------
-    NotAcceptable
-        Where the Accept header excludes it.
-
-    """
-    accepted = request.accept_mimetypes
-    if accepted and not accepted[JSON]:
-        raise NotAcceptable(f"answers are {JSON}; the Accept header excludes it")
-
-
-def answer(value: Any) -> Response:
-    """Answer 200 with compact JSON.
-
-    Raises
-    ------
-    ValueError
-        Where a number isn't finite.
-
-    """
-    text = json.dumps(value, allow_nan=False, ensure_ascii=False, separators=(",", ":"))
-    return Response(text, content_type=JSON)

@@ -3,15 +3,11 @@
 from __future__ import annotations
 
 from functools import cache
-from typing import TYPE_CHECKING
 
 from flask import Blueprint, Response
 from stagesum_schemas import openapi
 
-from stagesum_server.web.body import JSON, only_json
-
-if TYPE_CHECKING:
-    from flask.typing import ResponseReturnValue
+from stagesum_server.web.answer import JSON, only_json
 
 blueprint = Blueprint("contract", __name__)
 blueprint.before_request(only_json)
@@ -23,6 +19,6 @@ def _text() -> str:
 
 
 @blueprint.get("/openapi.json")
-def contract() -> ResponseReturnValue:
+def contract() -> Response:
     """Give the OpenAPI document."""
     return Response(_text(), content_type=JSON)

@@ -6,7 +6,7 @@ from typing import TYPE_CHECKING
 
 from flask import Blueprint
 
-from stagesum_server.web.body import answer
+from stagesum_server.web.answer import json_answer
 
 if TYPE_CHECKING:
     from flask import Response
@@ -17,4 +17,4 @@ blueprint = Blueprint("health", __name__)
 @blueprint.get("/healthz")
 def healthz() -> Response:
     """Say that the process is alive."""
-    return answer({"status": "ok"})
+    return json_answer({"status": "ok"})
