@@ -10,7 +10,6 @@ import pytest
 from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from scipy import stats
-
 from stagesum_server.app import create_app
 from stagesum_server.settings import Settings
 

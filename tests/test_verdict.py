@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import pytest
-
 from stagesum_server.engine.monte_carlo import numerical_tolerance
 
 

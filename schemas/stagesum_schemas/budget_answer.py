@@ -81,7 +81,7 @@ class PointConvolutionSchema(RecordSchema):
     sigma = number("Standard deviation, in the answer's unit")
     lower = number("Lower end of the probabilistically symmetric interval, in the answer's unit")
     upper = number("Upper end of the probabilistically symmetric interval, in the answer's unit")
-    shortest = Part("Shortest interval of the same coverage", IntervalSchema, required=True)
+    shortest = Part("Shortest interval of the same coverage, where it is found quickly", IntervalSchema)
     yield_ = StrictNumber("Expected share inside the limit", data_key="yield")
     outside_ppm = StrictNumber("Expected share outside the limit, in ppm")
 

@@ -16,7 +16,7 @@ from functools import cache
 from typing import Any, Self
 
 if typing.TYPE_CHECKING:
-    from collections.abc import Callable, Mapping
+    from collections.abc import Callable, Hashable, Mapping
 
     from stagesum_schemas.units import Quantity, Unit
 
@@ -64,6 +64,11 @@ def _readers(cls: Any) -> tuple[tuple[str, str, Callable[[Any], Any]], ...]:
     return tuple((name, member, _reader(hints[name])) for name, member in _members(cls))
 
 
+def _key(cls: type) -> Hashable:
+    """A class as a key of a cache (type checkers take its instances' hash for its own)."""
+    return typing.cast("Hashable", cls)
+
+
 class Record:
     """Base of the answer records: conversion to and from their JSON form."""
 
@@ -71,13 +76,15 @@ class Record:
 
     def to_dict(self) -> dict[str, Any]:
         """Return the JSON form: plain dicts, lists and numbers, absent members left out."""
-        pairs = ((member, getattr(self, name)) for name, member in _members(type(self)))
+        pairs = ((member, getattr(self, name)) for name, member in _members(_key(type(self))))
         return {member: _plain(value) for member, value in pairs if value is not None}
 
     @classmethod
     def from_dict(cls, data: Mapping[str, Any]) -> Self:
         """Make the record from its JSON form; members that this version doesn't know are passed over."""
-        return cls(**{name: read(data[member]) for name, member, read in _readers(cls) if data.get(member) is not None})
+        return cls(
+            **{name: read(data[member]) for name, member, read in _readers(_key(cls)) if data.get(member) is not None}
+        )
 
 
 # ---------------------------------------------------------------------------------------------
@@ -282,7 +289,7 @@ class PointConvolution(Record):
     sigma: float
     lower: float
     upper: float
-    shortest: Interval
+    shortest: Interval | None = None
     yield_: float | None = None
     outside_ppm: float | None = None
 

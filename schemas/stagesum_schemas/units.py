@@ -323,9 +323,13 @@ def _written(name: str, power: Fraction) -> str:
 
 
 @cache
-def _all_names() -> tuple[str, ...]:
-    prefixed = (prefix + name for name, entry in TABLE.items() if entry[2] for prefix in PREFIXES)
-    return (*TABLE, *prefixed)
+def _by_folded_name() -> dict[str, list[str]]:
+    """All names, prefixes included, by their lower-case form."""
+    prefixed = [prefix + name for name, entry in TABLE.items() if entry[2] for prefix in PREFIXES]
+    found: dict[str, list[str]] = {}
+    for name in (*TABLE, *prefixed):
+        found.setdefault(name.casefold(), []).append(name)
+    return found
 
 
 def _advice(text: str, plain: str, place: int) -> str:
@@ -337,7 +341,7 @@ def _advice(text: str, plain: str, place: int) -> str:
         return f'{found}; write units joined by * or /, such as "nV/sqrt(Hz)" or "ppm/K"'
     if word in HINTS:
         return f"found {word!r} in {text!r}; {HINTS[word]}"
-    same = [name for name in _all_names() if name.casefold() == word.casefold()]
-    near = same or difflib.get_close_matches(word, _all_names(), n=3, cutoff=0.6)
+    same = _by_folded_name().get(word.casefold(), [])
+    near = same or difflib.get_close_matches(word, TABLE, n=3, cutoff=0.6)
     meant = f"; did you mean {', '.join(near[:4])}?" if near else "; it is not a unit known here"
     return f"unknown unit {word!r} in {text!r}{meant}"

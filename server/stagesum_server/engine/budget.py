@@ -218,12 +218,13 @@ def _point_monte_carlo(tally: monte_carlo.Tally, model: Model, p: int) -> PointM
 
 def _point_convolution(found: _Analysis, p: int) -> PointConvolution:
     law = (found.laws or [])[p]
+    shortest = law.shortest(found.model.coverage)
     share = float(found.outside_exactly[p]) if found.outside_exactly is not None else None
     return PointConvolution(
         law.mean,
         law.sigma,
         *law.interval(found.model.coverage),
-        shortest=Interval(*law.shortest(found.model.coverage)),
+        shortest=Interval(*shortest) if shortest else None,
         yield_=None if share is None else 1.0 - share,
         outside_ppm=None if share is None else 1e6 * share,
     )

@@ -196,7 +196,8 @@ def _uniform(a: Array, theta: float, t: Array) -> Array | Complex:
         return np.sinc(a * (t / math.pi))
     y = a * (theta + 1j * t)
     r = a * abs(theta)
-    closed = (np.exp(y - r) - np.exp(-y - r)) / (2.0 * y)
+    with np.errstate(divide="ignore", invalid="ignore"):
+        closed = (np.exp(y - r) - np.exp(-y - r)) / (2.0 * y)
     square = y * y
     series = np.exp(-r) * (1.0 + square / 6.0 * (1.0 + square / 20.0 * (1.0 + square / 42.0)))
     return np.where(np.abs(y) < 0.05, series, closed)
@@ -211,6 +212,7 @@ def _arcsine(a: Array, theta: float, t: Array) -> Array | Complex:
 
 def _leaning(y: Complex, lean: float, r: float) -> Complex:
     """Triangular law on [-1, 1] with its peak at ``lean``: second divided difference of exp, scaled by exp(-r)."""
+    asked, y = y, np.where(y == 0.0, 1.0, y)  # the place y = 0 is for the quadrature
     if 1.0 - abs(lean) < 1e-9:
         side = 1.0 if lean > 0.0 else -1.0
         u = side * y
@@ -218,10 +220,10 @@ def _leaning(y: Complex, lean: float, r: float) -> Complex:
     else:
         ends = (1.0 - lean) * np.exp(-y - r) + (1.0 + lean) * np.exp(y - r)
         closed = (ends - 2.0 * np.exp(lean * y - r)) / ((1.0 - lean * lean) * y * y)
-    small = np.abs(y) < SMALL
+    small = np.abs(asked) < SMALL
     if not small.any():
         return np.asarray(closed)
-    return np.where(small, _leaning_by_quadrature(np.where(small, y, 0.0), lean, r), closed)
+    return np.where(small, _leaning_by_quadrature(np.where(small, asked, 0.0), lean, r), closed)
 
 
 def _leaning_by_quadrature(y: Complex, lean: float, r: float) -> Complex:

@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 
     Array = NDArray[np.float64]
 
-MOST_CONDITIONED = 3  # sources of a sum that is taken apart: each costs a hundredfold
+MOST_TAKEN_APART = 2  # sources that are split off a sum: each costs a hundredfold
 NEGLIGIBLE = 1e-14  # terms narrower than this share of the sum's sigma only shift it
 
 
@@ -32,8 +32,10 @@ class NoExactLawError(ValueError):
     """A sum for which no exact law is known here; the message says why."""
 
 
-def sum_law(terms: list[Term], offset: float = 0.0, paths: tuple[Path, ...] = ()) -> SumLaw:
+def sum_law(terms: list[Term], offset: float = 0.0, paths: tuple[Path, ...] = (), taken_apart: int = 0) -> SumLaw:
     """Give the law of ``offset`` plus the sum of independent terms (and of ``paths``, causes of mixed shape).
+
+    ``taken_apart`` counts how many sources have been split off a sum already.
 
     Raises
     ------
@@ -55,13 +57,13 @@ def sum_law(terms: list[Term], offset: float = 0.0, paths: tuple[Path, ...] = ()
         return _with_student(heavy, kept, offset, paths, sigma)
     transform = Transform(kept, paths)
     K = frequencies_needed(transform)
-    few = len(kept) + len(paths) <= MOST_CONDITIONED
-    if K <= (MANY if few else MOST):
+    few = len(kept) + len(paths) <= 2
+    if (MANY if few or taken_apart else MOST) >= K:
         mean = offset + math.fsum(t.coefficient * t.law.mean for t in kept) + sum(path.mean for path in paths)
         return SeriesLaw(transform, offset, mean, sigma, K)
-    if not few and not any(isinstance(t.law, laws.TwoPoint) for t in kept) and not paths:
+    if taken_apart == MOST_TAKEN_APART:
         raise NoExactLawError(f"its series falls too slowly for an error of {TOLERANCE:g}; Monte Carlo is the method")
-    return _hard(kept, offset, paths)
+    return _hard(kept, offset, paths, taken_apart)
 
 
 def _flatten(term: Term) -> list[Term]:
@@ -95,7 +97,7 @@ def _with_student(heavy: list[Term], kept: list[Term], offset: float, paths: tup
     return ScaleMixture(term.law, term.coefficient, make, sigma)
 
 
-def _hard(terms: list[Term], offset: float, paths: tuple[Path, ...]) -> SumLaw:
+def _hard(terms: list[Term], offset: float, paths: tuple[Path, ...], taken_apart: int) -> SumLaw:
     """Atoms first, then the widest source, are taken out of the sum; what is left is a sum again."""
     atoms = [_two_points(t) for t in terms if isinstance(t.law, laws.TwoPoint)]
     atoms += [(path.values, path.weights) for path in paths]
@@ -107,11 +109,11 @@ def _hard(terms: list[Term], offset: float, paths: tuple[Path, ...]) -> SumLaw:
             raise NoExactLawError("the sum has too many different discrete values; Monte Carlo is the method") from None
         if not rest:
             return DiscreteLaw(values, weights, offset)
-        return AtomMixture(values, weights, sum_law(rest, offset))
+        return AtomMixture(values, weights, sum_law(rest, offset, (), taken_apart))
     widest = max(rest, key=lambda t: abs(t.coefficient) * t.law.sigma)
     others = list(rest)
     others.remove(widest)
-    return ConditionedLaw(SingleLaw(widest, 0.0), sum_law(others, offset))
+    return ConditionedLaw(SingleLaw(widest, 0.0), sum_law(others, offset, (), taken_apart + 1))
 
 
 def _two_points(term: Term) -> tuple[Array, Array]:

@@ -27,6 +27,7 @@ if TYPE_CHECKING:
 
 SEMIDEFINITE_TOLERANCE = 1e-9  # smallest eigenvalue of a correlation matrix that rounding alone explains
 HERMITE_TERMS = 200
+MOST_KINKS = 500
 SCORE_LIMIT = 9.0  # normal scores beyond carry less than 1e-18 of the probability
 
 
@@ -233,6 +234,8 @@ def pearson(first: Law, second: Law, rho: float) -> float:
 
 def score_nodes(kinks: tuple[float, ...]) -> tuple[Array, Array]:
     """Gauss-Legendre nodes over the normal score, in panels that end at the laws' kinks, and normal weights."""
+    if len(kinks) > MOST_KINKS:  # so many small bends are smooth to the quadrature
+        kinks = ()
     edges = np.unique(np.concatenate([np.linspace(-SCORE_LIMIT, SCORE_LIMIT, 73), special.ndtri(np.array(kinks))]))
     edges = edges[np.isfinite(edges)]
     nodes, weights = np.polynomial.legendre.leggauss(16)

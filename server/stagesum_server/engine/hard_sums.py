@@ -7,7 +7,7 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
-from stagesum_server.engine.sum_law import SingleLaw, SumLaw
+from stagesum_server.engine.sum_law import SingleLaw, SumLaw, search_shortest
 
 if TYPE_CHECKING:
     from collections.abc import Callable
@@ -77,6 +77,9 @@ class DiscreteLaw(SumLaw):
 
     def quantile(self, p: float) -> float:  # noqa: D102
         return float(self.values[min(int(np.searchsorted(self._below[1:], p * (1.0 - 1e-14))), self.values.size - 1)])
+
+    def shortest(self, coverage: float) -> tuple[float, float] | None:  # noqa: D102
+        return search_shortest(self, coverage)
 
     def upper_quantile(self, q: float) -> float:  # noqa: D102
         exceeding = self._above[1:]

@@ -80,33 +80,33 @@ class SumLaw(ABC):
         tail = 0.5 * (1.0 - coverage)
         return self.quantile(tail), self.upper_quantile(tail)
 
-    def shortest(self, coverage: float) -> tuple[float, float]:
-        """Shortest coverage interval (JCGM 101:2008, 3.16), by golden section over the share below it.
-
-        Where the law is its own mirror image and has one peak this is the symmetric interval.
-        """
-        missing = 1.0 - coverage
-        if self.one_peak_in_the_middle:
-            return self.interval(coverage)
-
-        def ends(below: float) -> tuple[float, float]:
-            low = self.lower if below <= 0.0 else self.quantile(below)
-            high = self.upper if below >= missing else self.upper_quantile(missing - below)
-            return low, high
-
-        def width(below: float) -> float:
-            low, high = ends(below)
-            return high - low
-
-        places = np.linspace(0.0, missing, SHORTEST_PLACES)
-        best = int(np.argmin([width(float(place)) for place in places]))
-        low, high = places[max(best - 1, 0)], places[min(best + 1, SHORTEST_PLACES - 1)]
-        return ends(_golden(width, float(low), float(high)))
+    def shortest(self, coverage: float) -> tuple[float, float] | None:
+        """Shortest coverage interval (JCGM 101:2008, 3.16), or None where it would take too long to search."""
+        return self.interval(coverage) if self.one_peak_in_the_middle else None
 
     @property
     def one_peak_in_the_middle(self) -> bool:
         """Whether the law is known to be its own mirror image with a single peak."""
         return False
+
+
+def search_shortest(law: SumLaw, coverage: float) -> tuple[float, float]:
+    """Shortest coverage interval by golden section over the share below it."""
+    missing = 1.0 - coverage
+
+    def ends(below: float) -> tuple[float, float]:
+        low = law.lower if below <= 0.0 else law.quantile(below)
+        high = law.upper if below >= missing else law.upper_quantile(missing - below)
+        return low, high
+
+    def width(below: float) -> float:
+        low, high = ends(below)
+        return high - low
+
+    places = np.linspace(0.0, missing, SHORTEST_PLACES)
+    best = int(np.argmin([width(float(place)) for place in places]))
+    low, high = places[max(best - 1, 0)], places[min(best + 1, SHORTEST_PLACES - 1)]
+    return ends(_golden(width, float(low), float(high)))
 
 
 def _golden(f: Callable[[float], float], low: float, high: float) -> float:
@@ -134,7 +134,7 @@ def _solve(f: Callable[[float], float], target: float, low: float, high: float, 
         value = f(x)
         return sign * ((math.log(value) if value > 0.0 else -800.0) - goal)
 
-    g_low, g_high, side = distance(low), distance(high), 0
+    g_low, g_high, side, reach = distance(low), distance(high), 0, high - low
     if g_low >= 0.0 or g_high <= 0.0:
         return low if g_low >= 0.0 else high
     for step in range(SEARCH_STEPS):
@@ -142,7 +142,7 @@ def _solve(f: Callable[[float], float], target: float, low: float, high: float, 
         if not low < x < high:
             break
         g = distance(x)
-        if abs(g) < 4e-15 or high - low <= 4e-16 * max(abs(low), abs(high)):
+        if abs(g) < 1e-13 or high - low <= 1e-14 * reach:
             return x
         if g < 0.0:
             low, g_low = x, g
@@ -185,6 +185,9 @@ class SingleLaw(SumLaw):
             return 2.0 * self.mean - self.quantile(q)
         return super().upper_quantile(q) if self.c > 0.0 else self.quantile(1.0 - q)
 
+    def shortest(self, coverage: float) -> tuple[float, float] | None:  # noqa: D102
+        return super().shortest(coverage) or search_shortest(self, coverage)
+
     @property
     def one_peak_in_the_middle(self) -> bool:  # noqa: D102
         return self.law.symmetric and self.law.shape not in ("arcsine", "two_point")
@@ -205,7 +208,7 @@ def frequencies_needed(transform: Transform) -> int:
     K = FEWEST
     while K <= MOST:
         bound, power = transform.envelope(K * step)
-        if bound == 0.0 or (power > 0.0 and bound / (math.pi * power) < TOLERANCE) or bound < 1e-40:
+        if bound < 1e-40 or (power > 0.0 and bound / (math.pi * power) < TOLERANCE):
             return K
         K *= 2
     return 2 * MOST
@@ -234,6 +237,10 @@ class SeriesLaw(SumLaw):
         x, F = self._table
         right = int(np.searchsorted(F, p))
         return float(x[max(right - 2, 0)]), float(x[min(right + 1, BRACKETS)])
+
+    def shortest(self, coverage: float) -> tuple[float, float] | None:  # noqa: D102
+        found = super().shortest(coverage)
+        return search_shortest(self, coverage) if found is None and self.t.size <= MANY else found
 
     @property
     def one_peak_in_the_middle(self) -> bool:  # noqa: D102
@@ -316,7 +323,7 @@ class SeriesLaw(SumLaw):
             allowed = math.log(TOLERANCE / max(1.0, abs(theta) * self.sigma)) + log_scale - self.A * abs(theta)
             while K < MOST:
                 bound, power = self.transform.envelope(K * step)
-                if bound == 0.0 or (power > 0.0 and math.log(bound / power) < allowed):
+                if bound < 1e-300 or (power > 0.0 and math.log(bound) - math.log(power) < allowed):
                     break
                 K *= 2
             t = step * np.arange(K + 1, dtype=np.float64)

@@ -36,6 +36,7 @@ def build(request: BudgetRequest, limits: Limits) -> Model:
     """
     faults, told = Faults(), Assumptions()
     _refuse_sizes(request, limits, faults)
+    faults.refuse()
     chain = frame(request, limits.max_points, faults)
     sources = _sources(request, chain, faults, told)
     correlations = _correlations(request, sources, faults)

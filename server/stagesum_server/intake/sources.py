@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -145,7 +145,7 @@ def _read(
     if any(quantity.is_rejection for quantity in quantities.values()):
         figures, unit = _rejection(spec, quantities, coherent, pointer, faults), DIMENSIONLESS
     else:
-        unit = next((q.unit for q in quantities.values() if q.unit is not None), None) or coherent
+        unit = next((q.unit for q in quantities.values() if q.unit and q.unit.same_kind(coherent)), coherent)
         figures = _figures(spec, quantities, unit, coherent, pointer, faults)
         if any(quantity.unit is None for quantity in quantities.values()) and coherent.symbol:
             told.note(f"a plain number is read in {coherent.symbol}", label)
@@ -158,7 +158,15 @@ def _read(
         return None
     for assumption in reading.assumptions:
         told.note(assumption, label)
-    return reading, unit
+    return _with_rejection(reading, spec), unit
+
+
+def _with_rejection(reading: Reading, spec: LawSpec) -> Reading:
+    """Tell a rejection's dB figures beside the ratios that they stand for."""
+    texts = [q.text for q in (spec.min or spec.max, spec.typ) if q is not None and q.is_rejection]
+    if not texts:
+        return reading
+    return replace(reading, sentence=f"rejection of {' (typ '.join(texts)}{')' * (len(texts) - 1)}: {reading.sentence}")
 
 
 def _quantities(spec: LawSpec) -> dict[str, Quantity]:

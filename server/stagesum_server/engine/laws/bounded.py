@@ -308,5 +308,9 @@ class Samples(Law):
         return False
 
     @property
+    def kinks(self) -> tuple[float, ...]:  # noqa: D102
+        return tuple(np.linspace(0.0, 1.0, self.values.size)[1:-1].tolist())
+
+    @property
     def family(self) -> tuple[object, ...]:  # noqa: D102
         return (self.shape, id(self.values))

@@ -1,0 +1,5 @@
+"""``python -m stagesum.command``."""
+
+from stagesum.command import main
+
+main()
