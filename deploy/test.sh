@@ -23,7 +23,7 @@ command -v "$python" >/dev/null 2>&1 || fail "found no $python; install Python 3
 "$environment/bin/python" -m pip install --quiet --disable-pip-version-check -e ".[dev]" ||
     fail "pip could not install what the tests need; its message stands above (is a package index reachable?)"
 
-"$environment/bin/python" -m pytest -q "$@"
+"$environment/bin/python" -m pytest -q -n auto "$@"
 "$environment/bin/ruff" check
 "$environment/bin/ruff" format --check
 "$environment/bin/mypy"

@@ -1,128 +1,229 @@
-"""The command: what it prints, and the exit status that a pipeline gates on."""
+"""The command: exit statuses, messages, and the table."""
 
 from __future__ import annotations
 
 import json
+import socket
+from dataclasses import replace
 
 import pytest
 from click.testing import CliRunner
-from stagesum.command import main
-from stagesum.command.numbers import interval, outward
-from stagesum.command.table import WIDTH, draw
-from stagesum_schemas.records import Budget, Interval
+from stagesum import Budget, Interval, Point, Rss, Service, VarianceParts, WorstCase
+from stagesum.command import main, serve, table
 
 
 @pytest.fixture(autouse=True)
-def no_url(monkeypatch):
+def _no_service_elsewhere(monkeypatch):
     monkeypatch.delenv("STAGESUM_URL", raising=False)
 
 
 @pytest.fixture
-def chain(example, tmp_path):
-    """Write a variant of the example to a file; gives its path."""
-    example["monte_carlo"]["trials"] = 20_000
+def quick(example):
+    """The example with its quickest method; 0.0117 bar is what it reaches."""
+    return example | {"methods": ["worst_case"], "limit": {"max": "0.012 bar", "by": ["worst_case"]}}
 
-    def write(**changes) -> str:
+
+@pytest.fixture
+def run(tmp_path):
+    """Run ``stagesum budget`` on a chain, or on text that should be one."""
+
+    def start(chain, *options):
         file = tmp_path / "chain.json"
-        file.write_text(json.dumps({k: v for k, v in (example | changes).items() if v is not None}))
-        return str(file)
+        file.write_text(chain if isinstance(chain, str) else json.dumps(chain), encoding="utf-8")
+        return CliRunner().invoke(main, ["budget", str(file), *options])
 
-    return write
-
-
-def run(*arguments: str, **options):
-    return CliRunner().invoke(main, arguments, **options)
+    return start
 
 
-def test_a_limit_that_is_met_exits_0(chain):
-    result = run("budget", chain(limit={"max": "0.02 bar"}))
-    assert result.exit_code == 0, result.output
-    assert "VERDICT: PASS" in result.stdout
+def test_a_limit_that_is_met_ends_with_0_and_says_pass_last(run, quick):
+    result = run(quick)
+    assert result.exit_code == 0
+    assert result.stdout.splitlines()[-1].startswith("VERDICT: PASS, decided by worst case (pass)")
 
 
-def test_a_limit_that_is_not_met_exits_1(chain):
-    result = run("budget", chain(limit={"max": "0.001 bar"}))
+def test_a_limit_that_is_not_met_ends_with_1(run, quick):
+    quick["limit"]["max"] = "0.011 bar"
+    result = run(quick)
     assert result.exit_code == 1
     assert "VERDICT: FAIL" in result.stdout
 
 
-def test_an_undecided_verdict_exits_1(chain):
-    result = run("budget", chain(limit={"max": "0.009 bar", "yield": 0.9999, "by": ["monte_carlo"]}))
-    assert result.exit_code == 1
+def test_an_undecided_limit_ends_with_1(run, quick):
+    quick |= {"methods": ["monte_carlo"], "monte_carlo": {"trials": 10_000, "seed": 1}}
+    quick["limit"] = {"max": "0.009 bar", "yield": 0.9998, "by": ["monte_carlo"]}
+    result = run(quick)
     assert "VERDICT: UNDECIDED" in result.stdout
+    assert result.exit_code == 1
 
 
-def test_without_a_limit_the_exit_status_is_0(chain):
-    result = run("budget", chain(limit=None))
+def test_no_limit_ends_with_0(run, quick):
+    del quick["limit"]
+    result = run(quick)
     assert result.exit_code == 0
-    assert "VERDICT: none" in result.stdout
+    assert result.stdout.splitlines()[-1] == "VERDICT: none, no limit is given"
 
 
-def test_a_wrong_chain_exits_2_and_names_the_place(chain):
-    result = run("budget", chain(refer_to="nowhere"))
+def test_a_wrong_chain_ends_with_2_and_one_fault_a_line(run, quick):
+    quick["stages"][0]["sources"][0]["max"] = "40 hours"
+    quick["stages"][1]["sources"][0]["max"] = "50 uA"
+    result = run(quick)
     assert result.exit_code == 2
-    assert "#/refer_to: found 'nowhere'" in result.stderr
+    assert result.stdout == ""
+    places = [line.split(": ")[1] for line in result.stderr.splitlines()]
+    assert places == ["#/stages/0/sources/0/max", "#/stages/1/sources/0/max"]
 
 
-@pytest.mark.parametrize(
-    ("text", "words"), [("{", "not JSON"), ("[]", "no JSON object"), ('{"input": 1, "input": 2}', "stands twice")]
-)
-def test_what_is_no_chain_exits_2(tmp_path, text, words):
-    file = tmp_path / "chain.json"
-    file.write_text(text)
-    result = run("budget", str(file))
+@pytest.mark.parametrize("text", ["", "{", "\x00", "[" * 100_000, '{"title": NaN}'])
+def test_text_that_is_no_json_ends_with_2(run, text):
+    result = run(text)
     assert result.exit_code == 2
-    assert words in result.stderr
+    assert result.stderr.startswith("stagesum: ")
 
 
-def test_a_missing_file_exits_2():
-    result = run("budget", "nowhere.json")
+def test_a_missing_file_ends_with_2():
+    result = CliRunner().invoke(main, ["budget", "no such file.json"])
     assert result.exit_code == 2
-    assert "can't be read" in result.stderr
+    assert "no such file.json" in result.stderr
 
 
-def test_an_unreachable_service_exits_3(chain):
-    result = run("budget", chain(), "--url", "http://127.0.0.1:9")
+def test_an_address_that_is_none_ends_with_2(run, quick):
+    result = run(quick, "--url", "localhost:8000")
+    assert result.exit_code == 2
+    assert "http://host:port" in result.stderr
+
+
+def test_a_service_that_is_not_there_ends_with_3(run, quick):
+    with socket.create_server(("127.0.0.1", 0)) as silent:  # takes the connection and never answers
+        address = f"http://127.0.0.1:{silent.getsockname()[1]}"
+        result = run(quick, "--url", address, "--timeout", "0.1")
     assert result.exit_code == 3
-    assert "can't be reached" in result.stderr
+    assert "gave no answer within the timeout" in result.stderr
 
 
-def test_standard_input_is_read(chain):
-    with open(chain(), encoding="utf-8") as file:
-        result = run("budget", "-", "--json", input=file.read())
+def test_a_chain_comes_from_standard_input(quick):
+    result = CliRunner().invoke(main, ["budget", "-"], input=json.dumps(quick))
     assert result.exit_code == 0
-    assert json.loads(result.stdout)["verdict"]["overall"] == "pass"
 
 
-def test_the_table_fits_and_tells_everything(post, example):
-    text = draw(Budget.from_dict(post("/v1/budget", example)))
-    assert max(len(line) for line in text.splitlines()) <= WIDTH
-    for words in ("Irrigation line", "worst case   fail", "bridge/linearity", "Assumptions", "Cautions", "±0.01169"):
-        assert words in text
+def test_json_is_the_whole_answer(run, quick, client):
+    answer = client.post("/v1/budget", data=json.dumps(quick), content_type="application/json")
+    result = run(quick, "--json")
+    assert result.exit_code == 0
+    assert json.loads(result.stdout) == answer.get_json()
 
 
-def test_many_points_are_cut_down_with_a_word(post, example):
-    example["input"]["values"] = list(range(11))
-    example["methods"] = ["worst_case", "rss"]
-    del example["limit"]
-    text = draw(Budget.from_dict(post("/v1/budget", example)))
-    assert "42 more points" in text
+def test_serve_names_a_library_that_is_missing(monkeypatch):
+    monkeypatch.setattr(serve_module(), "find_spec", lambda name: None if name == "gunicorn" else name)
+    result = CliRunner().invoke(main, ["serve"])
+    assert result.exit_code == 3
+    assert "needs gunicorn" in result.stderr
 
 
-@pytest.mark.parametrize(
-    ("value", "side", "text"),
-    [
-        (0.0116923, 1, "0.0117"),
-        (0.011692, -1, "0.01169"),
-        (-0.0116921, -1, "-0.0117"),
-        (0.009, 1, "0.009"),
-        (0, 1, "0"),
-    ],
-)
-def test_an_interval_never_shrinks_by_rounding(value, side, text):
-    assert outward(value, side) == text
+def test_serve_hands_over_to_gunicorn(monkeypatch):
+    started = []
+    monkeypatch.setattr(serve_module().os, "execv", lambda file, words: started.append((file, words)))
+    assert CliRunner().invoke(main, ["serve", "--port", "8123", "--workers", "3"]).exit_code == 0
+    (file, words) = started[0]
+    assert file == words[0]
+    assert words[-5:] == ["--bind", "127.0.0.1:8123", "--workers", "3", "stagesum_server.app:create_app()"]
 
 
-def test_unsymmetrical_intervals_show_both_ends():
-    assert interval(Interval(-1.0, 2.0)) == "-1 to 2"
-    assert interval(Interval(-2.0, 2.0)) == "±2"
+def serve_module():
+    """The module; the package's attribute of that name is the command."""
+    import sys
+
+    assert serve.name == "serve"
+    return sys.modules["stagesum.command.serve"]
+
+
+# ---------------------------------------------------------------------------------------------
+# The table
+
+
+def bare(points, **more):
+    """A budget with nothing but points."""
+    return Budget(
+        title="",
+        service=Service("stagesum", "0", "v1"),
+        refer_to="output",
+        unit="V",
+        points=tuple(points),
+        governing_point=0,
+        contributions=(),
+        variance_parts=VarianceParts(1.0, 0.0),
+        assumptions=(),
+        cautions=(),
+        coverage=0.95,
+        **more,
+    )
+
+
+def at(value, worst, conditions=None):
+    extremes = WorstCase(-worst, worst, Interval(-worst, worst))
+    return Point(value, conditions or {}, value, worst_case=extremes)
+
+
+def test_the_table_keeps_within_120_columns(run, example):
+    example["stages"][0]["name"] = "b" * 80
+    example["correlations"] = []
+    lines = run(example).stdout.splitlines()
+    assert max(map(len, lines)) <= 120
+    assert any(line.startswith("bbb") and "../linearity " in line for line in lines)  # the source's own name stays
+
+
+def test_every_source_is_followed_by_its_data_sheet_reading(run, quick):
+    lines = run(quick).stdout.splitlines()
+    row = next(i for i, line in enumerate(lines) if line.startswith("bridge/linearity"))
+    assert lines[row + 1].strip().startswith("max only: uniform between -0.05 and 0.05 %")
+
+
+def test_absent_sections_are_left_out():
+    text = table.draw(bare([at(1.0, 0.002)]))
+    assert "rss" not in text
+    assert "Monte Carlo" not in text
+    assert "CONTRIBUTIONS" not in text
+    assert "ASSUMPTIONS" not in text
+    assert text.splitlines()[0] == "Error budget"
+
+
+def test_errors_are_rounded_outwards_and_permitted_errors_inwards():
+    point = replace(at(1.0, 0.00123401), limit=Interval(-0.00234591, 0.00234599))
+    row = next(line for line in table.draw(bare([point])).splitlines() if line.startswith("*"))
+    assert row.split()[-3:] == ["+-2.345", "+-1.235", "+-1.235"]
+
+
+def test_rounding_noise_of_a_double_does_not_raise_a_limit():
+    row = next(line for line in table.draw(bare([at(1.0, 0.1 + 0.2)])).splitlines() if line.startswith("*"))
+    assert row.split()[-1] == "+-300.0"  # 0.30000000000000004 V, in 1e-3 V
+
+
+def test_beyond_24_points_the_governing_and_the_worst_are_shown():
+    points = [at(float(i), 0.001 * (i + 1)) for i in range(30)]
+    lines = table.draw(bare(points)).splitlines()
+    shown = [line[1:].split()[0] for line in lines[5:] if line[1:].split() and line[1:].split()[0].isdigit()]
+    assert shown == ["0", *map(str, range(7, 30))]  # 0 governs by decree
+    assert "6 points with smaller errors are not shown; --json has all 30." in lines
+
+
+def test_many_conditions_are_cut_with_a_word_about_it():
+    names = {f"condition number {i}": 1.0 for i in range(12)}
+    text = table.draw(bare([at(1.0, 0.001, names)]))
+    assert "Conditions not shown: condition number 4," in text
+    assert max(map(len, text.splitlines())) <= 120
+
+
+def test_what_a_terminal_would_obey_is_not_passed_on():
+    text = table.draw(replace(bare([at(1.0, 0.001)]), title="a\x1b[2Jb"))
+    assert "\x1b" not in text
+    assert "a?[2Jb" in text
+
+
+def test_a_cut_rss_is_told():
+    rss = Rss(mean=0.0, sigma=0.001, coverage_factor=3.0, lower=-0.002, upper=0.002, cut=True)
+    assert "cut at the worst case" in table.draw(bare([Point(1.0, {}, 1.0, rss=rss)]))
+
+
+@pytest.mark.parametrize("size", [0.0, 1e-30, 1e-9, 1.0, 1e12])
+def test_any_magnitude_has_a_table(size):
+    text = table.draw(bare([at(1.0, size)]))
+    assert max(map(len, text.splitlines())) <= 120

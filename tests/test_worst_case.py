@@ -47,6 +47,7 @@ def chains(draw) -> dict:
         "monte_carlo": {"trials": 2000, "seed": draw(st.integers(0, 2**31))},
         "readings_averaged": draw(st.sampled_from([1, 3])),
         "refer_to": draw(st.sampled_from(["input", "output", "s0"])),
+        "methods": ["worst_case", "monte_carlo"],
     }
     if draw(st.booleans()):
         points = [{"input": 0.5}, {"input": 2}][: draw(st.integers(1, 2))]

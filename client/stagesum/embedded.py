@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Any
 from urllib.parse import unquote, urlsplit
 
 from requests.adapters import BaseAdapter, HTTPAdapter
-from urllib3 import HTTPResponse
+from urllib3 import HTTPHeaderDict, HTTPResponse
 
 from stagesum.errors import MissingExtra, ServiceUnavailable
 
@@ -117,5 +117,5 @@ def _header_variables(headers: Mapping[str, str]) -> dict[str, str]:
 def _response(request: PreparedRequest, status: str, headers: list[tuple[str, str]], body: bytes) -> Response:
     """Give the answer the form that every other transport gives it."""
     code, _, reason = status.partition(" ")
-    raw = HTTPResponse(io.BytesIO(body), headers, int(code), reason=reason, preload_content=False)
+    raw = HTTPResponse(io.BytesIO(body), HTTPHeaderDict(headers), int(code), reason=reason, preload_content=False)
     return HTTPAdapter().build_response(request, raw)

@@ -21,6 +21,7 @@ if TYPE_CHECKING:
 
     Array = NDArray[np.float64]
 
+NOISE_ERRORS = 4.0  # standard errors by which the worst of many interval ends may be off
 PASS, FAIL, UNDECIDED = "pass", "fail", "undecided"
 
 
@@ -90,7 +91,7 @@ def check_rss(model: Model, rss: Propagation, method: str, against: list[Interva
         d / t if t > 0.0 else (math.inf if d > 0.0 else 0.0) for d, t in zip(differences, tolerances, strict=True)
     ]
     p = int(np.argmax(excess))
-    noise = 2.0 * _quantile_noise(float(rss.sigma[p]), model.coverage, trials) if trials else 0.0
+    noise = NOISE_ERRORS * _quantile_noise(float(rss.sigma[p]), model.coverage, trials) if trials else 0.0
     holds, detail = _holds(method, differences[p], tolerances[p], noise)
     return Checks(method, tolerances[p], float(differences[p]), p, detail, holds)
 

@@ -24,7 +24,8 @@ if TYPE_CHECKING:
 
     Array = NDArray[np.float64]
 
-SWEEPS = 50
+SWEEPS = 200
+IDLE = 1e-12  # share of a point's largest sensitivity below which a variable has no first-order effect
 PATH_STEPS = 65  # places along a merged cause's path that are tried before the best one is refined
 REFINEMENTS = 24
 
@@ -83,8 +84,8 @@ def extremes(model: Model, S: Array, clusters: tuple[Cluster, ...]) -> Extremes:
     if model.calibration is None and not paths:
         lower, upper = _by_intervals(model, low, high)
     else:
-        lower = _by_search(model, at_lower, low, high, paths, -1.0)
-        upper = _by_search(model, at_upper, low, high, paths, 1.0)
+        lower = _by_search(model, S, at_lower, low, high, paths, -1.0)
+        upper = _by_search(model, S, at_upper, low, high, paths, 1.0)
     return Extremes(lower, upper, S * at_lower, S * at_upper)
 
 
@@ -201,24 +202,54 @@ class _Search:
         return e / self.model.referral, gradient / self.model.referral
 
 
-def _by_search(model: Model, start: Array, low: Array, high: Array, paths: list[Path], direction: float) -> Array:
-    """Largest (direction 1) or smallest (-1) exact error at each point, from the first-order vertex on."""
-    search, x = _Search(model), start.copy()
+def _by_search(
+    model: Model, S: Array, start: Array, low: Array, high: Array, paths: list[Path], direction: float
+) -> Array:
+    """Largest (direction 1) or smallest (-1) exact error at each point, from first-order vertices on.
+
+    Variables without a first-order effect may have one beside others (an offset and a gain drift after calibration):
+    they start at their lower ends once and at their upper ends once.
+    """
+    search = _Search(model)
+    idle = np.abs(S) <= IDLE * np.abs(S).max(axis=1, keepdims=True)
+    for path in paths:
+        idle[:, path.members] = False
+    found = [_climb(search, np.where(idle, end, start), low, high, paths, direction) for end in (low, high)]
+    return np.asarray(np.max(found, axis=0) if direction > 0.0 else np.min(found, axis=0))
+
+
+def _climb(search: _Search, start: Array, low: Array, high: Array, paths: list[Path], direction: float) -> Array:
+    """Follow the signs of the gradient from a vertex until no step helps; gives the error there."""
+    x = start.copy()
     free = np.ones(x.shape[1], dtype=bool)
     for path in paths:
         free[path.members] = False
-    best = search.error(x)[0]
+    best, slope = search.error(x)
     for _ in range(SWEEPS):
-        slope = direction * search.error(x)[1]
-        trial = np.where(free & (slope > 0.0), high, np.where(free & (slope < 0.0), low, x))
+        target = np.where(free & (direction * slope > 0.0), high, np.where(free & (direction * slope < 0.0), low, x))
+        trial = target.copy()
         for path in paths:
             _follow(search, trial, path, direction)
-        e = search.error(trial)[0]
-        better = direction * (e - best) > 0.0
-        if not better.any():
+        moved = _keep_better(search, x, best, trial, direction)
+        # where all steps together don't help, the most promising one alone does (two may undo each other)
+        gain = direction * slope * (target - x)
+        rows = np.arange(x.shape[0])
+        single = x.copy()
+        choice = np.argmax(gain, axis=1)
+        single[rows, choice] = target[rows, choice]
+        single[moved] = x[moved]
+        if not (_keep_better(search, x, best, single, direction) | moved).any():
             return best
-        x[better], best = trial[better], np.where(better, e, best)
+        slope = search.error(x)[1]
     return best
+
+
+def _keep_better(search: _Search, x: Array, best: Array, trial: Array, direction: float) -> NDArray[np.bool_]:
+    """Take over, in place, the rows of a trial that are better; tells which."""
+    e = search.error(trial)[0]
+    better = direction * (e - best) > 1e-14 * np.abs(best)
+    x[better], best[better] = trial[better], e[better]
+    return better
 
 
 def _follow(search: _Search, x: Array, path: Path, direction: float) -> None:
