@@ -21,7 +21,7 @@ command -v "$python" >/dev/null 2>&1 || fail "found no $python; install Python 3
     "$python" -m venv --clear "$environment" || fail "can't make a virtual environment in $environment"
 
 echo "Installing stagesum into $environment ..."
-"$environment/bin/python" -m pip install --quiet --disable-pip-version-check "$root[server]" ||
+"$environment/bin/python" -m pip install -qq --disable-pip-version-check "$root[server]" ||
     fail "pip could not install stagesum; its message stands above (is a package index reachable?)"
 
 echo

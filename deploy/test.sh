@@ -20,7 +20,7 @@ command -v "$python" >/dev/null 2>&1 || fail "found no $python; install Python 3
     "$python" -m venv --clear "$environment" ||
     fail "can't make a virtual environment; a Debian or Ubuntu system needs the package python3-venv"
 
-"$environment/bin/python" -m pip install --quiet --disable-pip-version-check -e ".[dev]" ||
+"$environment/bin/python" -m pip install -qq --disable-pip-version-check -e ".[dev]" ||
     fail "pip could not install what the tests need; its message stands above (is a package index reachable?)"
 
 "$environment/bin/python" -m pytest -q -n auto "$@"

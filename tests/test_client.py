@@ -86,6 +86,9 @@ def url(script):
             script.asked.append((self.command, self.path, dict(self.headers), body))
             time.sleep(script.delay)
             status, headers, text = script.answers.pop(0) if len(script.answers) > 1 else script.answers[0]
+            if status is None:  # hang up
+                self.close_connection = True
+                return
             self.send_response(status)
             for name, value in {"Content-Length": str(len(text)), **headers}.items():
                 self.send_header(name, value)
@@ -177,6 +180,13 @@ def test_a_slow_calculation_is_not_started_twice(script, url):
     script.delay = 0.4
     with Client(url, timeout=0.1) as client, pytest.raises(stagesum.ServiceUnavailable, match=r"within .* 0\.1 s"):
         client.budget(CHAIN)
+    assert len(script.asked) == 1
+
+
+def test_a_request_whose_connection_is_lost_is_not_sent_again(script, ask):
+    script.say(None)
+    with pytest.raises(stagesum.ServiceUnavailable):
+        ask(CHAIN)
     assert len(script.asked) == 1
 
 

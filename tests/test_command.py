@@ -192,6 +192,16 @@ def test_errors_are_rounded_outwards_and_permitted_errors_inwards():
     assert row.split()[-3:] == ["+-2.345", "+-1.235", "+-1.235"]
 
 
+@pytest.mark.parametrize(
+    ("limit", "share"),
+    [((-0.004, 0.002), "100 %"), ((-0.002, 0.008), "100 %"), ((0.0, 0.004), "200 %"), ((0.0, 0.0), "inf %")],
+)
+def test_an_error_is_held_against_the_limit_of_its_side(limit, share):
+    """Errors of +-2 mV; where no error of zero is permitted, distances count from the middle."""
+    point = replace(at(1.0, 0.002), limit=Interval(*limit))
+    assert f" V, {share} of the limit," in table.draw(bare([point]))
+
+
 def test_rounding_noise_of_a_double_does_not_raise_a_limit():
     row = next(line for line in table.draw(bare([at(1.0, 0.1 + 0.2)])).splitlines() if line.startswith("*"))
     assert row.split()[-1] == "+-300.0"  # 0.30000000000000004 V, in 1e-3 V

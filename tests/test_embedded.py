@@ -140,3 +140,16 @@ def test_the_command_line_of_serve_sets_brackets_around_a_long_address():
     assert words[:3] == [sys.executable, "-m", "gunicorn"]
     assert words[words.index("--bind") + 1] == "[::1]:8000"
     assert "--workers" not in words
+
+
+def test_the_settings_of_a_deployment_are_taken_by_gunicorn():
+    words = ["-m", "gunicorn", "--print-config", "-c", "deploy/gunicorn.conf.py", "stagesum_server.app:create_app()"]
+    path = os.pathsep.join(str(ROOT / folder) for folder in ("client", "server", "schemas"))
+    done = subprocess.run(
+        [sys.executable, *words], cwd=ROOT, env=os.environ | {"PYTHONPATH": path}, capture_output=True, text=True
+    )
+    assert done.returncode == 0, done.stderr
+    pairs = (line.partition("=") for line in done.stdout.splitlines())
+    taken = {name.strip(): value.strip() for name, _, value in pairs}
+    assert (taken["worker_class"], taken["preload_app"]) == ("gthread", "True")
+    assert taken.get("control_socket_disable", "True") == "True"  # older versions have no control socket

@@ -47,7 +47,7 @@ class Client:
         Seconds to wait for a connection and for the answer; one number stands for both.
     retries : int
         How often a request is tried again after a refused connection or a status that says "later".
-        A request that the service has begun to read is never sent a second time.
+        A timeout or a connection lost on the way isn't: the calculation may be running.
     session : requests.Session, optional
         A session of the caller's own (certificates, proxies, retries of its own); it stays open.
 

@@ -105,7 +105,7 @@ def _trials(found: MonteCarlo) -> str:
 
 
 def _joint_yield(found: MonteCarlo) -> str:
-    text = f"{percent(found.joint_yield or 0.0)} of units are inside the limit at every point"
+    text = f"{percent(found.joint_yield or 0.0)} of the simulated units are inside the limit at every point"
     if not found.joint_yield_interval:
         return text
     lower, upper = found.joint_yield_interval

@@ -51,8 +51,11 @@ def rows(budget: Budget) -> list[int]:
 def used(limits: Limits, permitted: Interval) -> float:
     """Give the part of the permitted error that ``limits`` use; 1 is all of it.
 
-    The larger distance of an end from the middle of what is permitted, over half its width.
+    Each end over the permitted one of its side; where zero error isn't permitted, the farthest
+    distance from the middle of what is, over half its width.
     """
+    if permitted.lower < 0.0 < permitted.upper:
+        return max(limits.upper / permitted.upper, limits.lower / permitted.lower)
     middle, half = 0.5 * (permitted.lower + permitted.upper), 0.5 * (permitted.upper - permitted.lower)
     farthest = max(limits.upper - middle, middle - limits.lower)
     return farthest / half if half > 0.0 else float("inf")
