@@ -5,5 +5,5 @@ Start with ``gunicorn -c deploy/gunicorn.conf.py "stagesum_server.app:create_app
 
 from stagesum_server.gunicorn_settings import *  # noqa: F403 - gunicorn reads every name
 
-bind = "0.0.0.0:8000"
+bind = "127.0.0.1:8000"
 accesslog = "-"

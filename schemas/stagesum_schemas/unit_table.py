@@ -148,5 +148,6 @@ HINTS = {
     "hr": "write h",
     "sec": "write s",
     "mo": "write d or yr",
-    "C/W": "write K/W",
+    "Nm": "write N*m",
+    "dB": "a figure in dB stands alone, such as 90 dB",
 }

@@ -21,14 +21,15 @@ from stagesum_schemas.unit_table import ALIASES, BASE, COHERENT, HINTS, PREFIXES
 LONGEST = 64  # characters of a quantity
 CACHED = 4096  # texts kept parsed
 HIGHEST_POWER = 6
-KELVIN_OFFSET = {"K": (Fraction(1), Fraction(0)), "degC": (Fraction(1), Fraction("273.15")),
-                 "degF": (Fraction(5, 9), Fraction("459.67") * Fraction(5, 9))}  # fmt: skip
+LARGEST = Fraction(10) ** 60  # factor to coherent SI of a unit as written; the smallest is its reciprocal
+ZERO_IN_KELVIN = {"degC": Fraction("273.15"), "degF": Fraction("459.67") * Fraction(5, 9)}
 
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 _FACTOR = re.compile(
     r"(?:sqrt\((?P<root>[^\W\d_]+|°[CF])\)|√(?P<sign>[^\W\d_]+)|(?P<name>[^\W\d_]+|°[CF]?|%))"
-    r"(?:\^(?P<power>-?[0-9](?:\.5)?))?"
+    r"(?:\^(?P<power>-?[0-9]+(?:\.[0-9]+)?))?"
 )
+_USUAL_POWERS = f"powers go from 0.5 to {HIGHEST_POWER} in steps of 0.5"
 # both micro signs, both ohm signs (U+03A9, U+2126), middle dot, minus sign, superscripts
 _SPELLINGS = str.maketrans(
     {"\u00b5": "u", "\u03bc": "u", "\u03a9": "ohm", "\u2126": "ohm", "·": "*", "\u2212": "-", "²": "^2", "³": "^3"}
@@ -45,13 +46,13 @@ class UnitError(ValueError):
 class Unit:
     """A product of named units to powers.
 
-    ``terms`` are (name, power) as written, ``dimension`` the exponents over ``unit_table.BASE``, ``factor`` the
-    factor to coherent SI: exact, but for roots of numbers that are no squares.
+    ``terms`` are (name, power), those above the line first, else as written; ``dimension`` the exponents over
+    ``unit_table.BASE``; ``factor`` the factor to coherent SI: exact, but for roots of numbers that are no squares.
     """
 
     terms: tuple[tuple[str, Fraction], ...]
     dimension: Dimension
-    factor: Fraction | float
+    factor: Fraction
 
     @property
     def symbol(self) -> str:
@@ -86,12 +87,15 @@ class Unit:
         Raises
         ------
         UnitError
-            Where the kinds differ; names both.
+            Where the kinds differ, or the factor is beyond double precision; names both.
 
         """
         if not self.same_kind(other):
             raise UnitError(f"{self.symbol or 'a plain number'} and {other.symbol or 'a plain number'} differ in kind")
-        return float(self.factor / other.factor)
+        factor = _rounded(self.factor / other.factor)
+        if factor == 0.0 or math.isinf(factor):
+            raise UnitError(f"{self.symbol} and {other.symbol} are too far apart in size")
+        return factor
 
     def tidy(self) -> Unit:
         """The named coherent unit where a product of several has one (nA*ohm is V), else itself."""
@@ -155,7 +159,7 @@ def absolute(quantity: Quantity, unit: Unit) -> float:
     Raises
     ------
     UnitError
-        Where the kinds differ, or the figure is in dB.
+        Where the kinds differ, the figure is in dB, or it is too large in ``unit``.
 
     """
     written = quantity.unit
@@ -164,19 +168,31 @@ def absolute(quantity: Quantity, unit: Unit) -> float:
     if written is DECIBEL:
         raise UnitError(f"found {quantity.text}; a figure in dB has no meaning here")
     here, there = _scale(written), _scale(unit)
-    if here is None or there is None:
-        if not written.same_kind(unit):
-            raise UnitError(f"found {quantity.text}; give it in {unit.symbol or 'a plain number'}")
-        return quantity.value * written.factor_to(unit)
-    kelvin = Fraction(repr(quantity.value)) * here[0] + here[1]
-    return float((kelvin - there[1]) / there[0])
+    if here is not None and there is not None:
+        kelvin = Fraction(repr(quantity.value)) * written.factor + here
+        value = _rounded((kelvin - there) / unit.factor)
+    elif written.same_kind(unit):
+        value = quantity.value * written.factor_to(unit)
+    else:
+        raise UnitError(f"found {quantity.text}; give it in {unit.symbol or 'a plain number'}")
+    if math.isinf(value):
+        raise UnitError(f"found {quantity.text}; the number is too large in {unit.symbol or 'a plain number'}")
+    return value
 
 
-def _scale(unit: Unit) -> tuple[Fraction, Fraction] | None:
-    """Size and zero of a temperature scale, in kelvin."""
-    if len(unit.terms) == 1 and unit.terms[0][1] == 1:
-        return KELVIN_OFFSET.get(unit.terms[0][0])
+def _scale(unit: Unit) -> Fraction | None:
+    """Zero of a temperature scale, in kelvin; prefixed kelvins are scales too."""
+    if len(unit.terms) == 1 and unit.terms[0][1] == 1 and unit.dimension == _one("K")[1]:
+        return ZERO_IN_KELVIN.get(unit.terms[0][0], Fraction(0))
     return None
+
+
+def _rounded(number: Fraction) -> float:
+    """Nearest float, infinite where the number is larger than any."""
+    try:
+        return float(number)
+    except OverflowError:
+        return math.inf if number > 0 else -math.inf
 
 
 # ---------------------------------------------------------------------------------------------
@@ -221,6 +237,8 @@ def _parse_unit(text: str) -> Unit:
     while True:
         if turn < 0 and not inside and plain[place : place + 1] == "(":
             inside, place = True, place + 1
+        if place == len(plain):
+            raise UnitError(f"found {text!r}; a unit is missing at its end")
         factor = _FACTOR.match(plain, place)
         if factor is None:
             raise UnitError(_advice(text, plain, place))
@@ -237,20 +255,31 @@ def _parse_unit(text: str) -> Unit:
         place += 1
     if inside:
         raise UnitError(f"found {text!r}; a closing parenthesis is missing")
-    return _product(terms)
+    return _product(terms, text)
 
 
 def _power(factor: re.Match[str]) -> Fraction:
     power = Fraction(factor["power"] or 1)
-    if not 0 < abs(power) <= HIGHEST_POWER:
-        raise UnitError(f"found {factor.group()!r}; powers go from 0.5 to {HIGHEST_POWER}")
-    return power if factor["name"] else power / 2
+    power = power if factor["name"] else power / 2
+    if not power or not _is_usual(power):
+        raise UnitError(f"found {factor.group()!r}; {_USUAL_POWERS}")
+    return power
 
 
-def _product(terms: list[tuple[str, Fraction]]) -> Unit:
+def _is_usual(power: Fraction) -> bool:
+    return abs(power) <= HIGHEST_POWER and power.denominator <= 2
+
+
+def _product(terms: list[tuple[str, Fraction]], text: str) -> Unit:
     unit = DIMENSIONLESS
     for name, power in terms:
         unit = unit * _unit(((name, power),))
+    if not all(_is_usual(power) for _, power in unit.terms):
+        raise UnitError(f"found {text!r}; {_USUAL_POWERS}")
+    if not 1 / LARGEST <= unit.factor <= LARGEST:
+        raise UnitError(
+            f"found {text!r}; its size is beyond 1e-60 to 1e60 of SI units, write smaller prefixes or powers"
+        )
     return unit
 
 
@@ -285,26 +314,21 @@ def _unit(terms: tuple[tuple[str, Fraction], ...]) -> Unit:
     if not terms:
         return DIMENSIONLESS
     dimension, factor = DIMENSIONLESS.dimension, Fraction(1)
-    rough = 1.0
     for name, power in terms:
         one, exponents = _one(name)
         dimension = tuple(d + power * e for d, e in zip(dimension, exponents, strict=True))
-        exact = _exact_power(one, power)
-        if exact is None:
-            rough *= float(one) ** float(power)
-        else:
-            factor *= exact
-    return Unit(terms, dimension, factor if rough == 1.0 else float(factor) * rough)
+        factor *= _to_power(one, power)
+    return Unit(tuple(sorted(terms, key=lambda term: term[1] < 0)), dimension, factor)
 
 
-def _exact_power(base: Fraction, power: Fraction) -> Fraction | None:
-    """``base ** power`` where that is a rational number."""
-    if power.denominator == 1:
-        return base ** int(power)
+def _to_power(base: Fraction, power: Fraction) -> Fraction:
+    """``base ** power``, exact where that is a rational number; its root is rounded to a float else."""
+    whole = math.floor(power)
+    rest = power - whole
     above, below = math.isqrt(base.numerator), math.isqrt(base.denominator)
-    if above * above != base.numerator or below * below != base.denominator:
-        return None
-    return Fraction(above, below) ** int(2 * power)
+    if rest == Fraction(1, 2) and above * above == base.numerator and below * below == base.denominator:
+        return base**whole * Fraction(above, below)
+    return base**whole * Fraction(float(base) ** float(rest))
 
 
 @cache

@@ -146,7 +146,7 @@ class Transform:
         if self._arcsine:
             yield _product(_arcsine, self._arcsine, theta, t), tilt * math.fsum(self._arcsine)
         if self._cut:
-            yield _cut_normals(self._cut, theta, t), tilt * math.fsum(cut[0] for cut in self._cut)
+            yield _cut_normals(self._cut, theta, t)
         for half, lean in self._leaning:
             yield _leaning(half * z, lean, half * tilt), half * tilt
         for values, weights in self._atoms:
@@ -263,19 +263,20 @@ def _pieces(values: Array, z: Complex, tilt: float) -> Complex:
     return np.asarray(M / middle.size)
 
 
-def _cut_normals(cuts: list[Cut], theta: float, t: Array) -> Array | Complex:
+def _cut_normals(cuts: list[Cut], theta: float, t: Array) -> tuple[Array | Complex, float]:
     """Product over cut normal laws: {exp(w^2/2) [Phi(khi - w) - Phi(klo - w)]} / content, w = s z, scaled.
 
     Through the Faddeeva function, so that no exponential overflows: each end adds
-    exp(+-a z - k^2/2) W(...) / 2, the body exp(w^2/2) is there while klo < Re w < khi.
+    exp(+-a z - k^2/2) W(...) / 2, the body exp(w^2/2) is there while klo < Re w < khi. Each law is scaled by the
+    largest of its three exponents at t = 0; their sum is given too.
     """
     merged = Counter(cuts)
     half, s, klo, khi, content = (np.array(column)[:, None] for column in zip(*merged, strict=True))
+    powers = np.array(list(merged.values()))
     if theta == 0.0 and np.all((np.abs(klo + khi) < 1e-12) & (khi > 0.5)):
-        M: Array | Complex = _symmetric_at_zero(s * t, khi, content)
-    else:
-        M = _tilted_cut(theta + 1j * t.astype(np.complex128), half, s, klo, khi, content)
-    return _powers(M, np.array(list(merged.values())))
+        return _powers(_symmetric_at_zero(s * t, khi, content), powers), 0.0
+    M, scales = _tilted_cut(theta + 1j * t.astype(np.complex128), half, s, klo, khi, content)
+    return _powers(M, powers), float(np.sum(powers * scales[:, 0]))
 
 
 def _symmetric_at_zero(x: Array, k: Array, content: Array) -> Array:
@@ -284,22 +285,25 @@ def _symmetric_at_zero(x: Array, k: Array, content: Array) -> Array:
     return np.asarray((np.exp(-0.5 * x * x) - np.exp(-0.5 * k * k) * (np.exp(-1j * k * x) * W).real) / content)
 
 
-def _tilted_cut(z: Complex, half: Array, s: Array, klo: Array, khi: Array, content: Array) -> Complex:
-    w, r = s * z, half * np.abs(z.real)
-    above, below = w.real > khi, w.real < klo
+def _tilted_cut(z: Complex, half: Array, s: Array, klo: Array, khi: Array, content: Array) -> tuple[Complex, Array]:
+    """Transforms of cut normal laws, shape (laws, K), and the exponents (laws, 1) that they are scaled by."""
+    theta = float(z[0].real)
+    w, centre = s * z, -0.5 * (klo + khi) * s  # the parent's centre relative to the middle of the support
+    above, below = s * theta > khi, s * theta < klo
+    inside = ~(above | below)
+    ends = np.maximum(half * theta - 0.5 * khi * khi, -half * theta - 0.5 * klo * klo)
+    r = np.where(inside, np.maximum(0.5 * (s * theta) ** 2 + centre * theta, ends), ends)
     root = math.sqrt(2.0)
     # W is taken in the upper half plane, where it is bounded
     W_hi = special.wofz(np.where(above, 1j * (w - khi), 1j * (khi - w)) / root)
     W_lo = special.wofz(np.where(below, 1j * (klo - w), 1j * (w - klo)) / root)
     end_hi = 0.5 * np.exp(half * z - r - 0.5 * khi * khi) * W_hi
     end_lo = 0.5 * np.exp(-half * z - r - 0.5 * klo * klo) * W_lo
-    centre = -0.5 * (klo + khi) * s  # parent's centre relative to the middle of the support
-    inside = ~(above | below)
     body = np.exp(np.where(inside, 0.5 * w * w + centre * z - r, -np.inf))
     M = (body + np.where(above, end_hi, -end_hi) + np.where(below, end_lo, -end_lo)) / content
     small = np.abs(half * z) < SMALL
     narrow = (khi - klo < 1.0) & small  # close cuts: the closed form cancels
-    return np.where(narrow, _cut_by_quadrature(np.where(small, z, 0.0), half, s, klo, khi, content, r), M)
+    return np.where(narrow, _cut_by_quadrature(np.where(small, z, 0.0), half, s, klo, khi, content, r), M), r
 
 
 def _cut_by_quadrature(z: Complex, half: Array, s: Array, klo: Array, khi: Array, content: Array, r: Array) -> Complex:

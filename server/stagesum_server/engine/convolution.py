@@ -25,6 +25,8 @@ if TYPE_CHECKING:
     Array = NDArray[np.float64]
 
 MOST_TAKEN_APART = 2  # sources that are split off a sum: each costs a hundredfold
+UNCUT_SIGMAS = 12.0  # a normal law cut beyond this is a normal law: 4e-33 is missing
+FARTHEST_CUT = 20.0  # sigmas; a cut on one side that is farther out only widens the support
 NEGLIGIBLE = 1e-14  # terms narrower than this share of the sum's sigma only shift it
 
 
@@ -67,9 +69,18 @@ def sum_law(terms: list[Term], offset: float = 0.0, paths: tuple[Path, ...] = ()
 
 
 def _flatten(term: Term) -> list[Term]:
-    """A mean of n readings is n terms of 1/n."""
-    if isinstance(term.law, laws.Averaged):
-        return [Term(term.coefficient / term.law.readings, term.law.single)] * term.law.readings
+    """A mean of n readings is n terms of 1/n; cuts that take nothing away aren't kept."""
+    law = term.law
+    if isinstance(law, laws.Averaged):
+        return _flatten(Term(term.coefficient / law.readings, law.single)) * law.readings
+    if isinstance(law, laws.TruncatedNormal) and law.cuts[0] < 0.0 < law.cuts[1]:
+        if min(-law.cuts[0], law.cuts[1]) > UNCUT_SIGMAS:
+            return [Term(term.coefficient, laws.Normal(law.m, law.s, law.lower, law.upper))]
+        near, far = law.m - FARTHEST_CUT * law.s, law.m + FARTHEST_CUT * law.s
+        if law.lower < near or law.upper > far:
+            return [
+                Term(term.coefficient, laws.TruncatedNormal(law.m, law.s, max(law.lower, near), min(law.upper, far)))
+            ]
     return [term]
 
 
