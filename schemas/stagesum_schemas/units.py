@@ -323,6 +323,8 @@ def _unit(terms: tuple[tuple[str, Fraction], ...]) -> Unit:
 
 def _to_power(base: Fraction, power: Fraction) -> Fraction:
     """``base ** power``, exact where that is a rational number; its root is rounded to a float else."""
+    if power < 0:
+        return 1 / _to_power(base, -power)
     whole = math.floor(power)
     rest = power - whole
     above, below = math.isqrt(base.numerator), math.isqrt(base.denominator)

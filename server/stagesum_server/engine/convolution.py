@@ -45,7 +45,7 @@ def sum_law(terms: list[Term], offset: float = 0.0, paths: tuple[Path, ...] = ()
         For two Student t sources, or more atoms than can be enumerated, where the sum isn't smooth without them.
 
     """
-    flat = [part for term in terms for part in _flatten(term)]
+    flat = [part for term in terms for part in flatten(term)]
     sigma = math.sqrt(sum((t.coefficient * t.law.sigma) ** 2 for t in flat) + sum(path.sigma**2 for path in paths))
     kept = [t for t in flat if abs(t.coefficient) * t.law.sigma > NEGLIGIBLE * sigma]
     offset += math.fsum(t.coefficient * t.law.mean for t in flat if t not in kept) if len(kept) < len(flat) else 0.0
@@ -68,11 +68,11 @@ def sum_law(terms: list[Term], offset: float = 0.0, paths: tuple[Path, ...] = ()
     return _hard(kept, offset, paths, taken_apart)
 
 
-def _flatten(term: Term) -> list[Term]:
+def flatten(term: Term) -> list[Term]:
     """A mean of n readings is n terms of 1/n; cuts that take nothing away aren't kept."""
     law = term.law
     if isinstance(law, laws.Averaged):
-        return _flatten(Term(term.coefficient / law.readings, law.single)) * law.readings
+        return flatten(Term(term.coefficient / law.readings, law.single)) * law.readings
     if isinstance(law, laws.TruncatedNormal) and law.cuts[0] < 0.0 < law.cuts[1]:
         if min(-law.cuts[0], law.cuts[1]) > UNCUT_SIGMAS:
             return [Term(term.coefficient, laws.Normal(law.m, law.s, law.lower, law.upper))]

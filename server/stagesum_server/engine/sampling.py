@@ -25,6 +25,7 @@ if TYPE_CHECKING:
     from stagesum_server.engine.correlation import Cluster
 
     Array = NDArray[np.float64]
+    Drawn = dict[tuple[int, int], Array]  # by variable and site; site -1 where all sites share the draw
 
 BLOCK = 65_536  # trials that share one random stream
 SUB_BLOCK = 8_192  # trials worked on at once: larger leaves the cache, smaller pays for numpy's calls
@@ -43,9 +44,11 @@ class _Part:
 class Sampler:
     """Draws errors of the exact chain; one object serves all threads, scratch arrays are made per block."""
 
-    def __init__(self, model: Model, clusters: tuple[Cluster, ...], seed: int) -> None:
+    def __init__(self, model: Model, clusters: tuple[Cluster, ...], seed: int, *, all_given: bool = False) -> None:
         self.model, self.clusters, self.seed = model, clusters, seed
         self.clustered = {member for cluster in clusters for member in cluster.members}
+        if all_given:  # every value will be handed to ``propagate``
+            self.clustered = set(range(len(model.variables)))
         self.parts: list[list[_Part]] = [[] for _ in model.stages]
         for index, variable in enumerate(model.variables):
             self.parts[variable.stage].append(_part(model, index, variable))
@@ -57,7 +60,10 @@ class Sampler:
             yield self._sub_block(rng, min(SUB_BLOCK, trials - start))
 
     def _sub_block(self, rng: np.random.Generator, size: int) -> Array:
-        drawn = self._draw_clusters(rng, size)
+        return self.propagate(self.draw_clusters(rng, size), rng, size)
+
+    def propagate(self, drawn: Drawn, rng: np.random.Generator, size: int) -> Array:
+        """Carry values through the chain: those in ``drawn``, all others drawn on the way; (points, size)."""
         nominal, gains = self.model.nominal, self.model.gains
         d = np.zeros((nominal.shape[0], size))
         x, scratch = np.empty(size), np.empty(size)
@@ -72,7 +78,7 @@ class Sampler:
         self,
         part: _Part,
         sums: _StageSums,
-        drawn: dict[tuple[int, int], Array],
+        drawn: Drawn,
         rng: np.random.Generator,
         x: Array,
         scratch: Array,
@@ -94,9 +100,9 @@ class Sampler:
                     variable.law.draw(rng, x)
             sums.add_at(part.sum, site, source, factor, scratch)
 
-    def _draw_clusters(self, rng: np.random.Generator, size: int) -> dict[tuple[int, int], Array]:
+    def draw_clusters(self, rng: np.random.Generator, size: int) -> Drawn:
         """Values of clustered variables, keyed by (variable, site), site -1 where all sites share the draw."""
-        drawn: dict[tuple[int, int], Array] = {}
+        drawn: Drawn = {}
         for cluster in self.clusters:
             first = self.model.variables[cluster.members[0]]
             for site in range(len(self.model.points)) if first.per_point else (-1,):
