@@ -21,6 +21,7 @@ from stagesum_schemas.fields import (
     Word,
 )
 
+SAMPLING = ("auto", "plain")
 EFFECTS = ("offset", "gain", "nonlinearity")
 SHAPES = (
     "normal",
@@ -221,6 +222,11 @@ class MonteCarloSchema(RecordSchema):
     seed = StrictInteger("Seed: the same seed gives the same answer", 0, HIGHEST_SEED, default=1)
     adaptive = StrictBoolean("Go on until the results are stable (JCGM 101:2008, 7.9)", default=False)
     max_trials = StrictInteger("Where an adaptive run ends", FEWEST_TRIALS, MOST_TRIALS, default=10_000_000)
+    sampling = Word(
+        "How a rare joint failure is estimated: auto (importance sampling where it is rare) or plain",
+        SAMPLING,
+        default="auto",
+    )
 
     @validates_schema(skip_on_field_errors=False)
     def refuse_two_ways(self, data: dict[str, Any], **kwargs: Any) -> None:

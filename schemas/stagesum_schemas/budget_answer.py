@@ -118,10 +118,12 @@ class MonteCarloAnswerSchema(RecordSchema):
     adaptive = StrictBoolean("Whether the number of trials was found by the run")
     converged = StrictBoolean("Whether an adaptive run became stable")
     tolerance = StrictNumber("Tolerance of an adaptive run, in the answer's unit")
-    joint_yield = StrictNumber("Share of trials inside the limit at every point")
+    joint_yield = StrictNumber("Share of units inside the limit at every point")
     joint_yield_interval = ListOf(
-        "95 % interval of the joint yield (Clopper and Pearson)", StrictNumber("An end"), 2, 2
+        "95 % interval of the joint yield (plain counting: Clopper and Pearson)", StrictNumber("An end"), 2, 2
     )
+    sampling = Word("How the joint yield was estimated", ("importance", "plain"))
+    effective_trials = StrictNumber("Plain trials that would tell the joint yield as well")
 
 
 class LargestSchema(RecordSchema):

@@ -208,6 +208,7 @@ class MonteCarloSpec:
     seed: int = 1
     adaptive: bool = False
     max_trials: int = 10_000_000
+    sampling: str = "auto"
 
 
 @dataclass(frozen=True, slots=True)
@@ -328,6 +329,8 @@ class MonteCarlo(Record):
     tolerance: float | None = None
     joint_yield: float | None = None
     joint_yield_interval: tuple[float, ...] | None = None
+    sampling: str | None = None
+    effective_trials: float | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -23,7 +23,7 @@ from stagesum_schemas.records import (
     WorstCase,
 )
 
-from stagesum_server.engine import correlation, exact, monte_carlo, rss, sensitivity, verdict, worst_case
+from stagesum_server.engine import correlation, exact, monte_carlo, rare, rss, sensitivity, verdict, worst_case
 from stagesum_server.engine.contributions import contributions, variance_parts
 from stagesum_server.engine.convolution import NoExactLawError
 from stagesum_server.engine.sampling import Sampler
@@ -31,7 +31,7 @@ from stagesum_server.engine.sampling import Sampler
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
-    from stagesum_server.engine.chain import Model
+    from stagesum_server.engine.chain import Limit, Model
     from stagesum_server.engine.sum_law import SumLaw
 
     Array = NDArray[np.float64]
@@ -56,15 +56,23 @@ class _Analysis:
     stable: tuple[bool, float] | None
     laws: list[SumLaw] | None
     no_laws: str
+    rare: rare.JointFailure | None
 
     @cached_property
     def outside_exactly(self) -> Array | None:
         """Share outside the limit at every point by the exact laws."""
-        limit = self.model.limit
-        if self.laws is None or limit is None:
+        return _outside_exactly(self.model.limit, self.laws) if self.model.limit else None
+
+    @property
+    def joint_yield(self) -> tuple[float, tuple[float, float]] | None:
+        """Share of units inside the limit at every point and its 95 % interval, by the sharper of two estimates."""
+        if self.tally is None or self.model.limit is None:
             return None
-        ends = zip(self.laws, limit.lower, limit.upper, strict=True)
-        return np.array([law.outside(float(lower), float(upper)) for law, lower, upper in ends])
+        if self.rare is not None:
+            low, high = self.rare.interval
+            return 1.0 - self.rare.share, (1.0 - high, 1.0 - low)
+        passed, trials = self.tally.inside_all, self.tally.trials
+        return passed / trials, monte_carlo.clopper_pearson(passed, trials)
 
 
 def compute(model: Model, version: str, threads: int = 1) -> Budget:
@@ -85,7 +93,7 @@ def compute(model: Model, version: str, threads: int = 1) -> Budget:
         monte_carlo=together,
         contributions=contributions(model, found.S, found.extremes, found.rss, governing),
         variance_parts=variance_parts(model, found.rss, governing),
-        verdict=_verdict(found, together),
+        verdict=_verdict(found),
         checks=_checks(found, points),
         assumptions=(*model.assumptions, *_notes(found)),
         cautions=CAUTIONS,
@@ -106,7 +114,18 @@ def _analyse(model: Model, threads: int) -> _Analysis:
     if "monte_carlo" in model.methods:
         tally, stable = _simulate(model, clusters, extremes, propagation, threads)
     laws, no_laws = _convolve(model, S, clusters)
-    return _Analysis(model, S, extremes, propagation, share, tally, stable, laws, no_laws)
+    seldom = None
+    if tally is not None and model.limit is not None and model.monte_carlo.sampling == "auto":
+        seldom = rare.estimate(model, model.limit, S, clusters, propagation, _outside_exactly(model.limit, laws))
+    return _Analysis(model, S, extremes, propagation, share, tally, stable, laws, no_laws, seldom)
+
+
+def _outside_exactly(limit: Limit, laws: list[SumLaw] | None) -> Array | None:
+    """Share outside the limit at every point by the exact laws."""
+    if laws is None:
+        return None
+    ends = zip(laws, limit.lower, limit.upper, strict=True)
+    return np.array([law.outside(float(lower), float(upper)) for law, lower, upper in ends])
 
 
 class MethodRefusedError(ValueError):
@@ -235,7 +254,7 @@ def _monte_carlo(found: _Analysis, governing: int) -> MonteCarlo | None:
     if tally is None:
         return None
     edges, counts = tally.histogram(governing)
-    has_limit = found.model.limit is not None
+    joint = found.joint_yield
     return MonteCarlo(
         trials=tally.trials,
         seed=asked.seed,
@@ -243,12 +262,14 @@ def _monte_carlo(found: _Analysis, governing: int) -> MonteCarlo | None:
         converged=found.stable[0] if found.stable else None,
         tolerance=found.stable[1] if found.stable else None,
         histogram=Histogram(tuple(edges.tolist()), tuple(counts.tolist())),
-        joint_yield=tally.inside_all / tally.trials if has_limit else None,
-        joint_yield_interval=monte_carlo.clopper_pearson(tally.inside_all, tally.trials) if has_limit else None,
+        joint_yield=joint[0] if joint else None,
+        joint_yield_interval=joint[1] if joint else None,
+        sampling=("importance" if found.rare else "plain") if joint else None,
+        effective_trials=(found.rare.effective_trials if found.rare else float(tally.trials)) if joint else None,
     )
 
 
-def _verdict(found: _Analysis, together: MonteCarlo | None) -> Verdict | None:
+def _verdict(found: _Analysis) -> Verdict | None:
     model = found.model
     said: dict[str, str] = {}
     if model.limit is None:
@@ -259,9 +280,8 @@ def _verdict(found: _Analysis, together: MonteCarlo | None) -> Verdict | None:
         said["rss"] = verdict.of_rss(found.outside, model.limit)
     if found.outside_exactly is not None:
         said["convolution"] = verdict.of_convolution(found.outside_exactly, model.limit)
-    if together is not None and found.tally is not None:
-        interval = monte_carlo.clopper_pearson(found.tally.inside_all, found.tally.trials)
-        said["monte_carlo"] = verdict.of_monte_carlo(interval, model.limit)
+    if found.joint_yield is not None:
+        said["monte_carlo"] = verdict.of_monte_carlo(found.joint_yield[1], model.limit)
     return verdict.overall(said, model.limit)
 
 

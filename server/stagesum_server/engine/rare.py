@@ -222,8 +222,10 @@ def _combine(outcomes: list[tuple[Array, Array]], beta: float, known: float) -> 
     share = beta * known + math.fsum(float(part.sum()) for part in parts) / trials
     variance = math.fsum(part.size * float(part.var(ddof=1)) for part in parts if part.size > 1) / trials**2
     share = min(max(share, 0.0), 1.0)
-    effective = share * (1.0 - share) / variance if variance > 0.0 else math.inf
-    return JointFailure(share, math.sqrt(variance), effective)
+    # a control that agrees in every failing trial seen doesn't prove that it agrees in all
+    failures = sum(int(np.count_nonzero(f)) for f, _ in outcomes)
+    error = max(math.sqrt(variance), share / failures)
+    return JointFailure(share, error, share * (1.0 - share) / error**2)
 
 
 def _outcome(
