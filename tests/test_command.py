@@ -49,7 +49,7 @@ def test_a_limit_that_is_not_met_ends_with_1(run, quick):
 
 
 def test_an_undecided_limit_ends_with_1(run, quick):
-    quick |= {"methods": ["monte_carlo"], "monte_carlo": {"trials": 10_000, "seed": 1}}
+    quick |= {"methods": ["monte_carlo"], "monte_carlo": {"trials": 10_000, "seed": 1, "sampling": "plain"}}
     quick["limit"] = {"max": "0.009 bar", "yield": 0.9998, "by": ["monte_carlo"]}
     result = run(quick)
     assert "VERDICT: UNDECIDED" in result.stdout

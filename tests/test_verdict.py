@@ -72,7 +72,8 @@ def test_a_worst_case_alone_decides(post):
 def test_too_few_trials_leave_the_verdict_undecided(post):
     """Normal, limit at 3 sigma: yield 0.9973; 1000 trials can't tell it from 0.997."""
     limit = {"max": "3 mV", "yield": 0.997, "by": ["monte_carlo"]}
-    answer = post("/v1/budget", chain({"typ": "1 mV", "at": "output"}, limit=limit, monte_carlo={"trials": 1000}))
+    plain = {"trials": 1000, "sampling": "plain"}
+    answer = post("/v1/budget", chain({"typ": "1 mV", "at": "output"}, limit=limit, monte_carlo=plain))
     assert answer["verdict"]["monte_carlo"] == answer["verdict"]["overall"] == "undecided"
 
 

@@ -289,3 +289,31 @@ def test_a_whole_surrogate_pair_is_text(client):
     body = json.dumps({**FULL, "title": "\U0001f4a7"}).encode("ascii")
     answer = client.post("/v1/budget", data=body, content_type="application/json")
     assert json.loads(answer.get_data())["title"] == "\U0001f4a7"
+
+
+def test_units_whose_product_cannot_be_carried_are_refused_in_words(client):
+    """Each unit alone can be computed with; together they leave the range of numbers."""
+    body = {
+        "input": {"unit": "qm^2", "values": [1]},
+        "conditions": {"x": {"nominal": "1 Qm^2", "values": ["2 Qm^2"]}},
+        "stages": [
+            {"name": "a", "gain": "1 qs^2"},
+            {"name": "b", "gain": "1 qA^2/A^2"},
+            {
+                "name": "c",
+                "gain": "1 qg/kg",
+                "sources": [
+                    {
+                        "name": "e",
+                        "effect": "offset",
+                        "at": "output",
+                        "per": "x",
+                        "law": "square",
+                        "max": "1 1/m^2",
+                        "times": "1 Qs^2",
+                    }
+                ],
+            },
+        ],
+    }
+    assert faults_of(client, body)

@@ -28,7 +28,7 @@ if TYPE_CHECKING:
     Drawn = dict[tuple[int, int], Array]  # by variable and site; site -1 where all sites share the draw
 
 BLOCK = 65_536  # trials that share one random stream
-SUB_BLOCK = 8_192  # trials worked on at once: larger leaves the cache, smaller pays for numpy's calls
+SUB_BLOCK = 16_384  # trials worked on at once: larger leaves the cache, smaller pays for numpy's calls
 
 
 @dataclass(frozen=True)
@@ -39,6 +39,8 @@ class _Part:
     sum: str
     common: float | None
     sites: tuple[tuple[int, float], ...]
+    size: float
+    offset: float
 
 
 class Sampler:
@@ -85,8 +87,8 @@ class Sampler:
     ) -> None:
         variable = self.model.variables[part.index]
         if part.common is not None and part.index not in self.clustered:
-            variable.law.draw(rng, x)
-            sums.add_common(part.sum, x, part.common, scratch)
+            variable.law.draw_standard(rng, x)
+            sums.add_common(part.sum, x, part.common * part.size, part.common * part.offset, scratch)
             return
         fresh = part.index not in self.clustered
         if fresh and not variable.per_point:
@@ -135,13 +137,15 @@ class _StageSums:
         self.common: dict[str, Array] = {}
         self.own: dict[str, dict[int, Array]] = {"a": {}, "g": {}, "b": {}}
 
-    def add_common(self, name: str, x: Array, factor: float, scratch: Array) -> None:
-        """Add ``factor * x`` at every site."""
-        if name not in self.common:
+    def add_common(self, name: str, x: Array, factor: float, shift: float, scratch: Array) -> None:
+        """Add ``factor * x + shift`` at every site."""
+        if name in self.common:
+            np.multiply(x, factor, out=scratch)
+            self.common[name] += scratch
+        else:
             self.common[name] = x * factor
-            return
-        np.multiply(x, factor, out=scratch)
-        self.common[name] += scratch
+        if shift != 0.0:
+            self.common[name] += shift
 
     def add_at(self, name: str, site: int, x: Array, factor: float, scratch: Array) -> None:
         """Add ``factor * x`` at one site."""
@@ -180,7 +184,7 @@ def _part(model: Model, index: int, variable: Variable) -> _Part:
     factors = variable.factor * span
     sites = tuple((int(site), float(factors[site])) for site in np.flatnonzero(factors))
     shared = not variable.per_point and len(sites) == factors.size and len({factor for _, factor in sites}) == 1
-    return _Part(index, name, sites[0][1] if shared else None, sites)
+    return _Part(index, name, sites[0][1] if shared else None, sites, *variable.law.standard)
 
 
 def _scores(root: Array, rng: np.random.Generator, size: int) -> list[Array]:

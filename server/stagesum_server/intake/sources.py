@@ -57,40 +57,26 @@ def source(
     place = _place(spec, frame, stage, pointer, faults)
     if len(faults.found) > before:
         return None
-    label = f"{owner}/{spec.name}"
-    found = _read(spec, place.coherent, rules, label, pointer, faults, told)
-    if found is None:
+    try:
+        found = _read(spec, place.coherent, rules, f"{owner}/{spec.name}", pointer, faults, told)
+        if found is None:
+            return None
+        reading, unit = found
+        factor = place.factor * (unit * place.beside).factor_to(place.unit)
+    except UnitError as error:  # each unit can be carried, their product can't
+        faults.add(pointer, str(error))
         return None
-    reading, unit = found
-    role: Role = (
-        ("input_offset" if spec.at == "input" else "output_offset") if spec.effect == "offset" else _role(spec.effect)
-    )
-    factor = place.factor * _closing_factor(unit, place)
     if spec.effect == "nonlinearity":
         _refuse_no_span(frame, stage, pointer, faults)
         factor[len(frame.points) :] = 0.0  # a calibration doesn't see it: it is what a straight line leaves
-    return Source(
-        stage,
-        owner,
-        spec.name,
-        spec.effect,
-        role,
-        reading.law,
-        factor,
-        reading.sentence,
-        unit.symbol,
-        spec.varies_by,
-        spec.dof,
-    )
+    told_back = (reading.law, factor, reading.sentence, unit.symbol, spec.varies_by, spec.dof)
+    return Source(stage, owner, spec.name, spec.effect, _role(spec), *told_back)
 
 
-def _role(effect: str) -> Role:
-    return "gain" if effect == "gain" else "nonlinearity"
-
-
-def _closing_factor(unit: Unit, place: _Place) -> float:
-    """Factor from figures in ``unit`` times what stands beside them to the unit of the place."""
-    return (unit * place.beside).factor_to(place.unit)
+def _role(spec: SourceSpec) -> Role:
+    if spec.effect == "offset":
+        return "input_offset" if spec.at == "input" else "output_offset"
+    return "gain" if spec.effect == "gain" else "nonlinearity"
 
 
 def _refuse_no_span(frame: Frame, stage: int, pointer: str, faults: Faults) -> None:

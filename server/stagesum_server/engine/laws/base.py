@@ -71,6 +71,20 @@ class Law(ABC):
 
     def draw(self, rng: np.random.Generator, out: Array) -> None:
         """Fill ``out`` with independent draws."""
+        self.draw_standard(rng, out)
+        size, offset = self.standard
+        if size != 1.0:
+            out *= size
+        if offset != 0.0:
+            out += offset
+
+    @property
+    def standard(self) -> tuple[float, float]:
+        """Size and offset that turn a standard draw into the law's."""
+        return 1.0, 0.0
+
+    def draw_standard(self, rng: np.random.Generator, out: Array) -> None:
+        """Fill ``out`` with draws of a standard form, which its user scales and shifts (see ``standard``)."""
         rng.random(out=out)
         out[...] = self.quantile(out)
 
@@ -111,10 +125,3 @@ def normal_content(low: Array | float, high: Array | float) -> Array:
         z = middle[..., None] + half[..., None] * _NODES
         narrow = half * np.sum(_WEIGHTS * np.exp(-0.5 * z * z), axis=-1) / SQRT_2PI
     return np.where(high - low < CLOSE, narrow, wide)
-
-
-def scale(out: Array, factor: float, offset: float) -> None:
-    """Replace ``out`` by ``offset + factor * out``."""
-    out *= factor
-    if offset != 0.0:
-        out += offset

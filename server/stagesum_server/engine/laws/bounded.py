@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING, ClassVar
 
 import numpy as np
 
-from stagesum_server.engine.laws.base import FAMILY_TOLERANCE, Law, scale
+from stagesum_server.engine.laws.base import FAMILY_TOLERANCE, Law
 
 if TYPE_CHECKING:
     from stagesum_server.engine.laws.base import Array
@@ -42,9 +42,12 @@ class Uniform(Law):
     def density(self, x: Array) -> Array:  # noqa: D102
         return np.where((x >= self.lower) & (x <= self.upper), 1.0 / (self.upper - self.lower), 0.0)
 
-    def draw(self, rng: np.random.Generator, out: Array) -> None:  # noqa: D102
+    @property
+    def standard(self) -> tuple[float, float]:  # noqa: D102
+        return self.upper - self.lower, self.lower
+
+    def draw_standard(self, rng: np.random.Generator, out: Array) -> None:  # noqa: D102
         rng.random(out=out)
-        scale(out, self.upper - self.lower, self.lower)
 
 
 @dataclass(frozen=True)

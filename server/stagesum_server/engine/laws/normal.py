@@ -10,7 +10,7 @@ from typing import TYPE_CHECKING, ClassVar
 import numpy as np
 from scipy import special
 
-from stagesum_server.engine.laws.base import FAMILY_TOLERANCE, SQRT_2PI, Law, normal_content, normal_density, scale
+from stagesum_server.engine.laws.base import FAMILY_TOLERANCE, SQRT_2PI, Law, normal_content, normal_density
 
 if TYPE_CHECKING:
     from stagesum_server.engine.laws.base import Array
@@ -58,9 +58,12 @@ class Normal(Law):
     def from_scores(self, z: Array) -> Array:  # noqa: D102
         return np.asarray(self.m + self.s * z)
 
-    def draw(self, rng: np.random.Generator, out: Array) -> None:  # noqa: D102
+    @property
+    def standard(self) -> tuple[float, float]:  # noqa: D102
+        return self.s, self.m
+
+    def draw_standard(self, rng: np.random.Generator, out: Array) -> None:  # noqa: D102
         rng.standard_normal(out=out)
-        scale(out, self.s, self.m)
 
 
 @dataclass(frozen=True)
@@ -125,19 +128,22 @@ class TruncatedNormal(Law):
         parent = np.exp(-0.5 * ((x - self.m) / self.s) ** 2) / (SQRT_2PI * self.s * self.content)
         return np.where(inside, parent, 0.0)
 
-    def draw(self, rng: np.random.Generator, out: Array) -> None:
+    @property
+    def standard(self) -> tuple[float, float]:  # noqa: D102
+        return (self.s, self.m) if self.content >= REJECTION_CONTENT else (1.0, 0.0)
+
+    def draw_standard(self, rng: np.random.Generator, out: Array) -> None:
         """Fill ``out``: by rejection where the cuts leave most of the parent, else by the quantile."""
         if self.content < REJECTION_CONTENT:
-            super().draw(rng, out)
+            super().draw_standard(rng, out)
             return
         low, high = self.cuts
         rng.standard_normal(out=out)
-        outside = np.flatnonzero((out < low) | (out > high))
+        outside = ((out < low) | (out > high)).nonzero()[0]
         while outside.size:
             again = rng.standard_normal(outside.size)
             out[outside] = again
             outside = outside[(again < low) | (again > high)]
-        scale(out, self.s, self.m)
 
     @property
     def symmetric(self) -> bool:  # noqa: D102
@@ -194,9 +200,12 @@ class StudentT(Law):
         peak = math.exp(math.lgamma(half + 0.5) - math.lgamma(half)) / (math.sqrt(self.dof * math.pi) * self.s)
         return np.asarray(peak * (1.0 + ((x - self.m) / self.s) ** 2 / self.dof) ** (-half - 0.5))
 
-    def draw(self, rng: np.random.Generator, out: Array) -> None:  # noqa: D102
+    @property
+    def standard(self) -> tuple[float, float]:  # noqa: D102
+        return self.s, self.m
+
+    def draw_standard(self, rng: np.random.Generator, out: Array) -> None:  # noqa: D102
         out[...] = rng.standard_t(self.dof, size=out.shape)
-        scale(out, self.s, self.m)
 
     @property
     def family(self) -> tuple[object, ...]:  # noqa: D102
