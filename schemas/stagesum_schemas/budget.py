@@ -222,6 +222,7 @@ class MonteCarloSchema(RecordSchema):
     seed = StrictInteger("Seed: the same seed gives the same answer", 0, HIGHEST_SEED, default=1)
     adaptive = StrictBoolean("Go on until the results are stable (JCGM 101:2008, 7.9)", default=False)
     max_trials = StrictInteger("Where an adaptive run ends", FEWEST_TRIALS, MOST_TRIALS, default=10_000_000)
+    refine = StrictBoolean("Make interval ends exact order statistics by a second pass over the trials", default=False)
     sampling = Word(
         "How a rare joint failure is estimated: auto (importance sampling where it is rare) or plain",
         SAMPLING,

@@ -209,6 +209,7 @@ class MonteCarloSpec:
     adaptive: bool = False
     max_trials: int = 10_000_000
     sampling: str = "auto"
+    refine: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -44,6 +44,15 @@ RANGE_SIGMAS = 12.0  # half-width of the Monte Carlo grid where a source has no 
 
 
 @dataclass(frozen=True)
+class _Simulation:
+    """The trials, the ends of the symmetric intervals (points, 2), and whether adaptive trials became stable."""
+
+    tally: monte_carlo.Tally
+    ends: Array
+    stable: tuple[bool, float] | None
+
+
+@dataclass(frozen=True)
 class _Analysis:
     """What the methods found, before it is written into records."""
 
@@ -52,8 +61,7 @@ class _Analysis:
     extremes: worst_case.Extremes
     rss: rss.Propagation
     outside: Array | None
-    tally: monte_carlo.Tally | None
-    stable: tuple[bool, float] | None
+    simulation: _Simulation | None
     laws: list[SumLaw] | None
     no_laws: str
     rare: rare.JointFailure | None
@@ -66,12 +74,12 @@ class _Analysis:
     @property
     def joint_yield(self) -> tuple[float, tuple[float, float]] | None:
         """Share of units inside the limit at every point and its 95 % interval, by the sharper of two estimates."""
-        if self.tally is None or self.model.limit is None:
+        if self.simulation is None or self.model.limit is None:
             return None
         if self.rare is not None:
             low, high = self.rare.interval
             return 1.0 - self.rare.share, (1.0 - high, 1.0 - low)
-        passed, trials = self.tally.inside_all, self.tally.trials
+        passed, trials = self.simulation.tally.inside_all, self.simulation.tally.trials
         return passed / trials, monte_carlo.clopper_pearson(passed, trials)
 
 
@@ -110,14 +118,14 @@ def _analyse(model: Model, threads: int) -> _Analysis:
     extremes = worst_case.extremes(model, S, clusters)
     propagation = rss.propagate(model, S, clusters)
     share = rss.outside(propagation, model.limit.lower, model.limit.upper) if model.limit else None
-    tally, stable = None, None
+    simulation = None
     if "monte_carlo" in model.methods:
-        tally, stable = _simulate(model, clusters, extremes, propagation, threads)
+        simulation = _simulate(model, clusters, extremes, propagation, threads)
     laws, no_laws = _convolve(model, S, clusters)
     seldom = None
-    if tally is not None and model.limit is not None and model.monte_carlo.sampling == "auto":
+    if simulation is not None and model.limit is not None and model.monte_carlo.sampling == "auto":
         seldom = rare.estimate(model, model.limit, S, clusters, propagation, _outside_exactly(model.limit, laws))
-    return _Analysis(model, S, extremes, propagation, share, tally, stable, laws, no_laws, seldom)
+    return _Analysis(model, S, extremes, propagation, share, simulation, laws, no_laws, seldom)
 
 
 def _outside_exactly(limit: Limit, laws: list[SumLaw] | None) -> Array | None:
@@ -154,7 +162,7 @@ def _simulate(
     extremes: worst_case.Extremes,
     propagation: rss.Propagation,
     threads: int,
-) -> tuple[monte_carlo.Tally, tuple[bool, float] | None]:
+) -> _Simulation:
     """Run the trials; the grid spans the worst case, or so many sigmas where a source has no bounds."""
     lower, upper = extremes.lower, extremes.upper
     if not all(variable.law.bounded for variable in model.variables):
@@ -163,10 +171,15 @@ def _simulate(
     tally = monte_carlo.Tally(monte_carlo.Grid.between(lower, upper), propagation.mean, model.limit)
     asked = model.monte_carlo
     sampler = Sampler(model, clusters, asked.seed)
+    stable = None
     if asked.adaptive:
-        return tally, monte_carlo.run_adaptively(sampler, tally, model.coverage, asked.max_trials, threads)
-    monte_carlo.run(sampler, tally, 0, asked.trials or monte_carlo.DEFAULT_TRIALS, threads)
-    return tally, None
+        stable = monte_carlo.run_adaptively(sampler, tally, model.coverage, asked.max_trials, threads)
+    else:
+        monte_carlo.run(sampler, tally, 0, asked.trials or monte_carlo.DEFAULT_TRIALS, threads)
+    if asked.refine:
+        return _Simulation(tally, monte_carlo.refined_intervals(sampler, tally, model.coverage, threads), stable)
+    ends = np.array([tally.interval(p, model.coverage) for p in range(len(model.points))])
+    return _Simulation(tally, ends, stable)
 
 
 # ---------------------------------------------------------------------------------------------
@@ -183,7 +196,7 @@ def _point(found: _Analysis, p: int) -> Point:
         limit=Interval(float(limit.lower[p]), float(limit.upper[p])) if limit else None,
         worst_case=_worst_case(found, p) if "worst_case" in model.methods else None,
         rss=_rss(found, p) if "rss" in model.methods else None,
-        monte_carlo=_point_monte_carlo(found.tally, model, p) if found.tally else None,
+        monte_carlo=_point_monte_carlo(found.simulation, model, p) if found.simulation else None,
         convolution=_point_convolution(found, p) if found.laws else None,
     )
 
@@ -222,13 +235,15 @@ def _capability(lower: float, upper: float, mean: float, sigma: float) -> tuple[
     return (upper - lower) / (6.0 * sigma), min(upper - mean, mean - lower) / (3.0 * sigma)
 
 
-def _point_monte_carlo(tally: monte_carlo.Tally, model: Model, p: int) -> PointMonteCarlo:
+def _point_monte_carlo(simulation: _Simulation, model: Model, p: int) -> PointMonteCarlo:
+    tally, ends = simulation.tally, simulation.ends[p]
     passed = int(tally.inside[p])
     has_limit = model.limit is not None
     return PointMonteCarlo(
         float(tally.mean[p]),
         float(tally.sigma[p]),
-        *tally.interval(p, model.coverage),
+        float(ends[0]),
+        float(ends[1]),
         shortest=Interval(*tally.shortest(p, model.coverage)),
         yield_=passed / tally.trials if has_limit else None,
         yield_interval=monte_carlo.clopper_pearson(passed, tally.trials) if has_limit else None,
@@ -250,17 +265,17 @@ def _point_convolution(found: _Analysis, p: int) -> PointConvolution:
 
 
 def _monte_carlo(found: _Analysis, governing: int) -> MonteCarlo | None:
-    tally, asked = found.tally, found.model.monte_carlo
-    if tally is None:
+    if found.simulation is None:
         return None
+    tally, stable, asked = found.simulation.tally, found.simulation.stable, found.model.monte_carlo
     edges, counts = tally.histogram(governing)
     joint = found.joint_yield
     return MonteCarlo(
         trials=tally.trials,
         seed=asked.seed,
         adaptive=asked.adaptive,
-        converged=found.stable[0] if found.stable else None,
-        tolerance=found.stable[1] if found.stable else None,
+        converged=stable[0] if stable else None,
+        tolerance=stable[1] if stable else None,
         histogram=Histogram(tuple(edges.tolist()), tuple(counts.tolist())),
         joint_yield=joint[0] if joint else None,
         joint_yield_interval=joint[1] if joint else None,
@@ -292,5 +307,5 @@ def _checks(found: _Analysis, points: tuple[Point, ...]) -> Checks | None:
     if exactly:
         return verdict.check_rss(found.model, found.rss, "convolution", exactly, None)
     drawn = [Interval(point.monte_carlo.lower, point.monte_carlo.upper) for point in points if point.monte_carlo]
-    trials = found.tally.trials if found.tally else None
+    trials = found.simulation.tally.trials if found.simulation else None
     return verdict.check_rss(found.model, found.rss, "monte_carlo", drawn, trials) if drawn else None

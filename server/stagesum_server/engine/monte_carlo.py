@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import itertools
 import math
 import threading
 from concurrent.futures import ThreadPoolExecutor
@@ -15,6 +14,8 @@ from scipy import special
 from stagesum_server.engine.sampling import BLOCK, Sampler
 
 if TYPE_CHECKING:
+    from collections.abc import Callable, Iterator
+
     from numpy.typing import NDArray
 
     from stagesum_server.engine.chain import Limit
@@ -45,6 +46,13 @@ class Grid:
         width = np.maximum(upper - lower, 1e-300 + 1e-12 * np.maximum(abs(lower), abs(upper)))
         return Grid(lower, lower + width, bins)
 
+    def places(self, e: Array, p: int) -> NDArray[np.int32]:
+        """Bins of errors at point ``p``; what lies outside the grid is counted in the last ones."""
+        shifted = e - self.lower[p]
+        shifted *= self.bins / (self.upper[p] - self.lower[p])
+        np.clip(shifted, 0, self.bins - 1, out=shifted)
+        return shifted.astype(np.int32)
+
 
 class Tally:
     """Sums and counts of errors at all points; partial tallies are added in the order of their blocks."""
@@ -61,16 +69,12 @@ class Tally:
     def add(self, e: Array) -> None:
         """Count errors, shape (points, trials)."""
         self.trials += e.shape[1]
-        scale = self.grid.bins / (self.grid.upper - self.grid.lower)
         passed = None
         for p, row in enumerate(e):
             shifted = row - self.centre[p]
             self.sums[0, p] += shifted.sum()
             self.sums[1, p] += np.square(shifted, out=shifted).sum()
-            np.subtract(row, self.grid.lower[p], out=shifted)
-            shifted *= scale[p]
-            np.clip(shifted, 0, self.grid.bins - 1, out=shifted)
-            self.counts[p] += np.bincount(shifted.astype(np.int32), minlength=self.grid.bins)
+            self.counts[p] += np.bincount(self.grid.places(row, p), minlength=self.grid.bins)
             if self.limit is not None:
                 inside = (row >= self.limit.lower[p]) & (row <= self.limit.upper[p])
                 self.inside[p] += np.count_nonzero(inside)
@@ -146,18 +150,17 @@ def _quantile(F: Array, x: Array, p: float) -> float:
 def run(sampler: Sampler, tally: Tally, first_block: int, trials: int, threads: int) -> None:
     """Add ``trials`` trials, beginning with block ``first_block``, to ``tally``.
 
-    Threads take the next block each; counts are added as they come, floating sums in the order of the blocks, so
-    that the result is the same for any number of threads.
+    Counts are added as they come, floating sums in the order of the blocks, so that the result is the same for any
+    number of threads.
     """
-    blocks = math.ceil(trials / BLOCK)
-    numbers, lock = itertools.count(), threading.Lock()
+    lock = threading.Lock()
     waiting: dict[int, Array] = {}
     expected = 0
 
-    def work() -> None:
+    def work(blocks: Iterator[int]) -> None:
         nonlocal expected
         mine = Tally(tally.grid, tally.centre, tally.limit)
-        while (block := next(numbers)) < blocks:
+        for block in blocks:
             mine.sums = np.zeros_like(tally.sums)
             for e in sampler.errors(first_block + block, min(BLOCK, trials - block * BLOCK)):
                 mine.add(e)
@@ -169,12 +172,48 @@ def run(sampler: Sampler, tally: Tally, first_block: int, trials: int, threads: 
         with lock:
             tally.absorb_counts(mine)
 
+    _share_out(work, math.ceil(trials / BLOCK), threads)
+
+
+def _share_out(work: Callable[[Iterator[int]], None], blocks: int, threads: int) -> None:
+    """Let each thread take the next block until none is left."""
+    numbers = iter(range(blocks))  # a range's iterator is safe to share between threads
     if threads == 1 or blocks == 1:
-        work()
+        work(numbers)
         return
     with ThreadPoolExecutor(min(threads, blocks)) as pool:
-        for future in [pool.submit(work) for _ in range(min(threads, blocks))]:
+        for future in [pool.submit(work, numbers) for _ in range(min(threads, blocks))]:
             future.result()
+
+
+def refined_intervals(sampler: Sampler, tally: Tally, coverage: float, threads: int) -> Array:
+    """Ends of the symmetric intervals as order statistics of all trials, shape (points, 2).
+
+    A second pass draws the same trials again and keeps only those in the histogram bins that hold the ends.
+    """
+    points = range(tally.centre.size)
+    tail = 0.5 * (1.0 - coverage)
+    ranks = [max(0, math.ceil(p * tally.trials - 1e-9) - 1) for p in (tail, 1.0 - tail)]
+    below = [np.concatenate([[0], np.cumsum(tally.counts[p])]) for p in points]
+    bins = np.array([[int(np.searchsorted(below[p], rank, side="right")) - 1 for rank in ranks] for p in points])
+    kept: list[list[list[Array]]] = [[[], []] for _ in points]
+    lock = threading.Lock()
+
+    def work(blocks: Iterator[int]) -> None:
+        for block in blocks:
+            for e in sampler.errors(block, min(BLOCK, tally.trials - block * BLOCK)):
+                for p in points:
+                    where = tally.grid.places(e[p], p)
+                    for end in (0, 1):
+                        found = e[p][where == bins[p, end]]
+                        if found.size:
+                            with lock:
+                                kept[p][end].append(found)
+
+    _share_out(work, math.ceil(tally.trials / BLOCK), threads)
+    return np.array(
+        [[np.sort(np.concatenate(kept[p][end]))[ranks[end] - below[p][bins[p, end]]] for end in (0, 1)] for p in points]
+    )
 
 
 def numerical_tolerance(u: float, digits: int = SIGNIFICANT_DIGITS) -> float:
