@@ -51,7 +51,7 @@ class Grid:
         shifted = e - self.lower[p]
         shifted *= self.bins / (self.upper[p] - self.lower[p])
         np.clip(shifted, 0, self.bins - 1, out=shifted)
-        return shifted.astype(np.int32)
+        return np.asarray(shifted.astype(np.int32))
 
 
 class Tally:
