@@ -8,6 +8,7 @@ import subprocess
 import sys
 import threading
 import time
+import traceback
 from http.server import BaseHTTPRequestHandler, ThreadingHTTPServer
 
 import pytest
@@ -259,6 +260,14 @@ def test_an_answer_that_breaks_off_is_told(script, ask):
 def test_a_wrong_address_is_refused(address):
     with pytest.raises(stagesum.InvalidAddress, match="found the address"), Client(address) as client:
         client.budget(CHAIN)
+
+
+@pytest.mark.parametrize("rest", ["127.0.0.1:9", "127.0.0.1:99999", "host:port"])
+def test_a_password_in_the_address_stays_out_of_messages(rest):
+    with pytest.raises(stagesum.StagesumError) as caught, Client(f"http://me:secret@{rest}", retries=0) as client:
+        client.budget(CHAIN)
+    assert "//***@" in str(caught.value)
+    assert "secret" not in "".join(traceback.format_exception(caught.value))
 
 
 def test_the_address_comes_from_the_environment_and_an_argument_comes_first(monkeypatch):

@@ -2,13 +2,26 @@
 
 from __future__ import annotations
 
+import io
 import json
 import socket
 from dataclasses import replace
 
 import pytest
 from click.testing import CliRunner
-from stagesum import Budget, Interval, Point, Rss, Service, VarianceParts, WorstCase
+from stagesum import (
+    Budget,
+    Contribution,
+    Histogram,
+    Interval,
+    Largest,
+    MonteCarlo,
+    Point,
+    Rss,
+    Service,
+    VarianceParts,
+    WorstCase,
+)
 from stagesum.command import main, serve, table
 
 
@@ -98,6 +111,27 @@ def test_a_service_that_is_not_there_ends_with_3(run, quick):
         result = run(quick, "--url", address, "--timeout", "0.1")
     assert result.exit_code == 3
     assert "gave no answer within the timeout" in result.stderr
+
+
+@pytest.mark.parametrize("seconds", ["nan", "inf", "0", "-1", "soon"])
+def test_a_timeout_that_is_no_time_ends_with_2(run, quick, seconds):
+    with socket.create_server(("127.0.0.1", 0)) as silent:
+        result = run(quick, "--url", f"http://127.0.0.1:{silent.getsockname()[1]}", "--timeout", seconds)
+    assert result.exit_code == 2
+    assert "--timeout" in result.stderr
+
+
+def test_a_file_that_fails_while_it_is_read_ends_with_2(run, quick, monkeypatch):
+    class Failing(io.BytesIO):
+        name = "chain.json"
+
+        def read(self, *_words):
+            raise OSError(5, "Input/output error")
+
+    monkeypatch.setattr("click.File.convert", lambda *_words: Failing())
+    result = run(quick)
+    assert result.exit_code == 2
+    assert result.stderr == "stagesum: chain.json can't be read: Input/output error\n"
 
 
 def test_a_chain_comes_from_standard_input(quick):
@@ -219,6 +253,47 @@ def test_many_conditions_are_cut_with_a_word_about_it():
     names = {f"condition number {i}": 1.0 for i in range(12)}
     text = table.draw(bare([at(1.0, 0.001, names)]))
     assert "Conditions not shown: condition number 4," in text
+    assert max(map(len, text.splitlines())) <= 120
+
+
+def test_conditions_make_room_for_wide_figures():
+    names = {f"condition number {i}": -1.23456e-05 for i in range(4)}
+    extremes = WorstCase(-0.0123, 0.9345, Interval(-0.0123, 0.9345))
+    text = table.draw(bare([Point(1.23456e-05, names, 1.23456e-05, worst_case=extremes)]))
+    assert max(map(len, text.splitlines())) <= 120
+    assert "Conditions not shown: condition number 3;" in text
+
+
+def test_the_bound_of_a_small_source_is_rounded_up_and_not_to_zero():
+    def source(name, bound):
+        largest = Largest(0, bound, 0.0)
+        return Contribution(
+            "a", name, "offset", "uniform", "V", 0, 0, (), "max only", "unit", 1, bound, 0, 0, 0, largest
+        )
+
+    found = replace(bare([at(1.0, 0.001)]), contributions=(source("large", 0.0012341), source("small", 1e-9)))
+    lines = table.draw(found).splitlines()
+    written = [next(line for line in lines if line.startswith(f"a/{name}")).split()[-3] for name in ("large", "small")]
+    assert written == ["1.235", "0.001"]
+
+
+@pytest.mark.parametrize(
+    ("share", "interval", "written"),
+    [
+        (0.99979999, (0.99971234, 0.99981234), "99.979 % of"),  # a target of 99.98 % is missed
+        (1.0 - 1e-13, (0.9, 1.0), "99.999999999 % of"),  # not all
+        (0.9998, (0.99971234, 0.99981234), "95 % confidence: 99.971 % .. 99.982 %)"),
+    ],
+)
+def test_a_yield_is_rounded_down_and_its_interval_outwards(share, interval, written):
+    trials = MonteCarlo(1000, 1, Histogram((), ()), joint_yield=share, joint_yield_interval=interval)
+    assert written in table.draw(replace(bare([at(1.0, 0.001)]), monte_carlo=trials))
+
+
+def test_magnitudes_far_apart_have_a_table():
+    point = replace(at(1.0, 1e-9), rss=Rss(0.0, 1.2345e40, 3.0, -1e-9, 1e-9, cut=True))
+    text = table.draw(bare([point]))
+    assert "1.234e+49" in text  # in units of 1e-9 V
     assert max(map(len, text.splitlines())) <= 120
 
 

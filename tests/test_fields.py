@@ -89,6 +89,25 @@ def test_a_long_value_is_repeated_in_part_only():
     assert len(complaint(StrictText("", 1, 10), "x" * 10**6)) < 150
 
 
+@pytest.mark.parametrize(
+    ("field", "value"),
+    [
+        (StrictText("", 1, 10), "\ud800" * 1000),
+        (StrictText("", 1, 1000), "\x00" * 1000),
+        (StrictInteger("", 0, 10), 10**300),
+        (StrictInteger(""), 10**5000),
+        (StrictNumber(""), -(10**5000)),
+        (QuantityField(""), 10**5000),
+    ],
+    ids=["surrogates", "controls", "out of range", "long integer", "long number", "long quantity"],
+)
+def test_a_message_stays_short_whatever_was_found(field, value):
+    """Escapes are longer than what they stand for, and Python refuses to write out more than 4300 digits."""
+    said = complaint(field, value)
+    assert said.startswith("found ")
+    assert len(said) < 150
+
+
 def test_a_misspelt_word_gets_the_nearest():
     said = complaint(Word("", ("worst_case", "rss")), "worstcase")
     assert said == "found 'worstcase'; write one of worst_case, rss; did you mean worst_case?"

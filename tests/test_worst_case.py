@@ -64,15 +64,15 @@ def test_no_trial_of_bounded_sources_leaves_the_worst_case(post, body):
     answer = post("/v1/budget", body)
     for point in answer["points"]:
         worst, drawn = point["worst_case"], point["monte_carlo"]
-        slack = 1e-9 * (worst["upper"] - worst["lower"])
+        slack = 1e-9 * (worst["upper"] - worst["lower"]) + 1e-13  # rounding of signals of some volts
         assert worst["lower"] - slack <= drawn["lower"] <= drawn["upper"] <= worst["upper"] + slack
     edges = answer["monte_carlo"]["histogram"]["edges"]
     counts = answer["monte_carlo"]["histogram"]["counts"]
     assert sum(counts) == 2000
     worst = answer["points"][answer["governing_point"]]["worst_case"]
     bin_width = (edges[-1] - edges[0]) / len(counts)
-    assert worst["lower"] - bin_width <= edges[0]
-    assert edges[-1] <= worst["upper"] + bin_width
+    assert worst["lower"] - bin_width - 1e-13 <= edges[0]
+    assert edges[-1] <= worst["upper"] + bin_width + 1e-13
 
 
 @QUICK

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import json
 import os
+import re
 from collections.abc import Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING, Any, Self
@@ -124,7 +125,8 @@ class Client:
         try:
             return Budget.from_dict(answer)
         except (TypeError, AttributeError, KeyError) as error:
-            raise UnexpectedAnswer(f"{self.url} answered JSON that is no budget: {error}") from error
+            said = f"{self.url} answered JSON that is no budget: {error}"
+            raise UnexpectedAnswer(_without_password(said)) from error
 
     def healthy(self) -> bool:
         """Tell whether the service answers (``GET /healthz``); never raises for a service that doesn't."""
@@ -141,21 +143,29 @@ class Client:
                 method, self.url + path, data=body, headers=headers, timeout=self._timeout, allow_redirects=False
             )
         except requests.Timeout as error:
-            raise ServiceUnavailable(f"{self.url} gave no answer within the timeout of {self._timeout} s") from error
+            said = f"{self.url} gave no answer within the timeout of {self._timeout} s"
+            raise ServiceUnavailable(_without_password(said)) from error
         except (requests.ConnectionError, requests.exceptions.RetryError) as error:
-            raise ServiceUnavailable(f"{self.url} can't be reached: {error}") from error
+            raise ServiceUnavailable(_without_password(f"{self.url} can't be reached: {error}")) from error
         except (requests.exceptions.InvalidURL, requests.exceptions.InvalidSchema) as error:
-            raise InvalidAddress(f"found the address {self.url!r}: {error}") from error
+            # Not chained: the message below repeats the address as it is.
+            raise InvalidAddress(_without_password(f"found the address {self.url!r}: {error}")) from None
         except requests.RequestException as error:
-            raise UnexpectedAnswer(f"the answer of {self.url} can't be read: {error}") from error
+            raise UnexpectedAnswer(_without_password(f"the answer of {self.url} can't be read: {error}")) from error
         return _read(response)
 
 
 def _address(url: str) -> str:
     """Check the form of an address; a slash at its end is dropped."""
     if url != embedded.ADDRESS and not url.lower().startswith(("http://", "https://")):
-        raise InvalidAddress(f"found the address {url!r}; write it as http://host:port or https://host")
+        said = f"found the address {url!r}; write it as http://host:port or https://host"
+        raise InvalidAddress(_without_password(said))
     return url.rstrip("/")
+
+
+def _without_password(message: str) -> str:
+    """Blank what stands before the host in an address: messages end up in logs."""
+    return re.sub(r"//[^/\s]*@", "//***@", message)
 
 
 def _session(retries: int) -> Session:
@@ -197,7 +207,7 @@ def _read(response: Response) -> dict[str, Any]:
         return answer
     if 400 <= response.status_code < 500 and "detail" in answer:
         raise _refusal(response.status_code, answer)
-    raise UnexpectedAnswer(_strange(response))
+    raise UnexpectedAnswer(_without_password(_strange(response)))
 
 
 def _object(response: Response) -> dict[str, Any]:

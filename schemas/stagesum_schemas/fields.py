@@ -15,6 +15,7 @@ if TYPE_CHECKING:
     from collections.abc import Mapping, Sequence
 
 SHORT = 60  # characters of a value that a message repeats
+LEAN = 5  # more characters for quotes and dots
 MOST_WRONG = 50  # items of one list that are told to be wrong
 LEAST, MOST = 1e-30, 1e30  # sizes of a figure; products of many stay far from the ends of double precision
 
@@ -28,7 +29,11 @@ def found(value: Any) -> str:
     if value is None or isinstance(value, bool):
         return {None: "null", True: "true", False: "false"}[value]
     if isinstance(value, str):
-        return repr(value if len(value) <= SHORT else f"{value[:SHORT]}...")
+        text = repr(value if len(value) <= SHORT else f"{value[:SHORT]}...")
+        # escapes are longer than what they stand for
+        return text if len(text) <= SHORT + LEAN else f"{text[:SHORT]}..."
+    if isinstance(value, int) and abs(value) >= 10**SHORT:  # Python refuses to write out thousands of digits
+        return f"an integer of more than {SHORT} digits"
     text = repr(value)
     return text if len(text) <= SHORT else f"{text[:SHORT]}..."
 
@@ -131,6 +136,19 @@ def _range_words(low: float | None, high: float | None, inside: tuple[bool, bool
     return lower + (" and" if lower and upper else "") + upper
 
 
+class Within(validate.Range):
+    """A range whose message repeats the value in short and ends with ``right``."""
+
+    right = ""
+
+    def __call__(self, value: Any) -> Any:
+        """Give the value back, or say what range is right."""
+        try:
+            return super().__call__(value)
+        except ValidationError:
+            raise ValidationError(f"found {found(value)}; {self.right}") from None
+
+
 class Ranged(Told):
     """A number with a range; ``inside`` says whether each end belongs to it."""
 
@@ -147,9 +165,8 @@ class Ranged(Told):
     ) -> None:
         self.right = f"write {self.noun}{_range_words(low, high, inside)}"
         if low is not None or high is not None:
-            options["validate"] = validate.Range(
-                low, high, min_inclusive=inside[0], max_inclusive=inside[1], error=f"found {{input}}; {self.right}"
-            )
+            options["validate"] = within = Within(low, high, min_inclusive=inside[0], max_inclusive=inside[1])
+            within.right = self.right
         super().__init__(about, **options)
 
 

@@ -109,7 +109,13 @@ TABLE: dict[str, _Entry] = {
     "count": _fixed(1, count=1),
 }
 
-ALIASES = {"Ohm": "ohm", "year": "yr", "counts": "count", "°C": "degC", "°F": "degF", "°": "deg"}
+ALIASES = {"day": "d", "a": "yr", "year": "yr", "counts": "count", "°C": "degC", "°F": "degF", "°": "deg"}
+
+# both micro signs, both ohm signs, both raised dots, minus sign, superscripts, signs that look like degrees
+SPELLINGS = str.maketrans({
+    "\u00b5": "u", "\u03bc": "u", "\u03a9": "ohm", "\u2126": "ohm", "\u00b7": "*", "\u22c5": "*", "\u2212": "-",
+    "\u00b2": "^2", "\u00b3": "^3", "\u00ba": "°", "\u2103": "degC", "\u2109": "degF",
+})  # fmt: skip
 
 # named coherent units, by which a product of others is told (nA * ohm is V)
 COHERENT = (
@@ -144,6 +150,8 @@ HINTS = {
     "Vpp": "give an amplitude or a standard deviation in V; peak-to-peak is not a unit",
     "Vrms": "write V; a standard deviation stands in typ",
     "LSB": "write the step in V, or count",
+    "FS": "write % alone; full scale is said by a member of its own",
+    "ppt": "write it in ppb or %; ppt is a thousandth to some and a trillionth to others",
     "rtHz": "write sqrt(Hz)",
     "hr": "write h",
     "sec": "write s",

@@ -1,9 +1,10 @@
 """Units and quantities: a number and a unit, and nothing else.
 
 No general unit parser ever sees request text: the grammar is a number, then a unit made of names of the closed table
-(``unit_table``) joined by ``*`` (or ``·``) and ``/``, each with a small power, ``sqrt(...)`` or ``√``. ``a/b/c`` is
-``a/(b*c)``; parentheses stand once, after ``/``. A name of the table wins over a prefix and a name: ``min`` is the
-minute, ``Pa`` the pascal, ``cd`` the candela. ``degC`` in a unit is a difference, 1 K.
+(``unit_table``) joined by ``*`` (or ``·``) and ``/``, each with a small power, ``sqrt(...)`` or ``√``. ``/`` divides by
+the one name after it: ``a/b/c`` is ``a/(b*c)``, ``a/b*c`` is ``a*c/b``; parentheses stand after ``/`` only. A name of
+the table wins over a prefix and a name: ``min`` is the minute, ``Pa`` the pascal, ``cd`` the candela; ``m`` alone is
+the metre, as a prefix alone is no unit. ``degC`` in a unit is a difference, 1 K.
 """
 
 from __future__ import annotations
@@ -16,7 +17,7 @@ from fractions import Fraction
 from functools import cache, lru_cache
 from itertools import takewhile
 
-from stagesum_schemas.unit_table import ALIASES, BASE, COHERENT, HINTS, PREFIXES, TABLE
+from stagesum_schemas.unit_table import ALIASES, BASE, COHERENT, HINTS, PREFIXES, SPELLINGS, TABLE
 
 LONGEST = 64  # characters of a quantity
 CACHED = 4096  # texts kept parsed
@@ -26,14 +27,10 @@ ZERO_IN_KELVIN = {"degC": Fraction("273.15"), "degF": Fraction("459.67") * Fract
 
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 _FACTOR = re.compile(
-    r"(?:sqrt\((?P<root>[^\W\d_]+|°[CF])\)|√(?P<sign>[^\W\d_]+)|(?P<name>[^\W\d_]+|°[CF]?|%))"
+    r"(?:(?:sqrt|√)\((?P<root>[^\W\d_]+|°[CF])\)|√(?P<sign>[^\W\d_]+)|(?P<name>[^\W\d_]+|°[CF]?|%))"
     r"(?:\^(?P<power>-?[0-9]+(?:\.[0-9]+)?))?"
 )
 _USUAL_POWERS = f"powers go from 0.5 to {HIGHEST_POWER} in steps of 0.5"
-# both micro signs, both ohm signs (U+03A9, U+2126), middle dot, minus sign, superscripts
-_SPELLINGS = str.maketrans(
-    {"\u00b5": "u", "\u03bc": "u", "\u03a9": "ohm", "\u2126": "ohm", "·": "*", "\u2212": "-", "²": "^2", "³": "^3"}
-)
 
 Dimension = tuple[Fraction, ...]
 
@@ -203,24 +200,32 @@ def _rounded(number: Fraction) -> float:
 def _parse_quantity(text: str) -> Quantity:
     stripped = text.strip().replace("\u2212", "-")
     number = _NUMBER.match(stripped)
+    if stripped.startswith(("±", "+-", "+/-")):
+        raise UnitError(f"found {text!r}; write the figure without a plus-minus sign")
     if number is None:
         raise UnitError(f'found {text!r}; write a number and a unit, such as "150 uV"')
     value, rest = float(number.group()), stripped[number.end() :]
-    _refuse_odd_numbers(text, value, rest)
+    _refuse_odd_sizes(text, value, number.group())
+    _refuse_odd_endings(text, rest)
     rest = rest.strip()
     return Quantity(value, _parse_unit(rest) if rest else None, text)
 
 
-def _refuse_odd_numbers(text: str, value: float, rest: str) -> None:
+def _refuse_odd_sizes(text: str, value: float, digits: str) -> None:
     if not math.isfinite(value):
         raise UnitError(f"found {text!r}; the number is too large")
-    if re.match(r",\s*[0-9]", rest):
+    if not value and re.match(r"[^eE]*[1-9]", digits):
+        raise UnitError(f"found {text!r}; the number is too small, write 0 or a smaller prefix")
+
+
+def _refuse_odd_endings(text: str, rest: str) -> None:
+    if re.match(r"[,'’]\s*[0-9]|\s[0-9]{3}", rest):
         raise UnitError(f"found {text!r}; write a decimal point, not a comma, and no thousands separators")
     if rest.startswith("_"):
         raise UnitError(f"found {text!r}; write digits without underscores")
     if re.match(r"[A-Za-z][0-9]", rest):
         raise UnitError(f'found {text!r}; write the prefix with the unit, such as "4.7 kohm"')
-    if re.search(r"[0-9)]\s*[+-]|\*\*|[-+]\s*[0-9.]+\s*[A-Za-z]", rest):
+    if re.search(r"[0-9)]\s*[+-]|\*\*|\+|\s-|-\s*[0-9.]+\s*[A-Za-z]", rest):
         raise UnitError(f"found {text!r}; a number and a unit only, nothing is computed")
 
 
@@ -230,7 +235,7 @@ def _parse_unit(text: str) -> Unit:
         return DIMENSIONLESS
     if text == "dB":
         return DECIBEL
-    plain = text.translate(_SPELLINGS)
+    plain = text.translate(SPELLINGS)
     terms, place, turn, inside = [], 0, 1, False
     if plain.startswith("1/"):
         place, turn = 2, -1
@@ -285,7 +290,7 @@ def _product(terms: list[tuple[str, Fraction]], text: str) -> Unit:
 
 def _name(written: str, text: str) -> str:
     """The table's own spelling of a name, prefix included."""
-    name = ALIASES.get(written, written)
+    name = f"{written[:-3]}ohm" if written.endswith("Ohm") else ALIASES.get(written, written)
     if name in TABLE or _split(name) is not None:
         return name
     raise UnitError(_advice(text, written, 0))
@@ -364,10 +369,25 @@ def _advice(text: str, plain: str, place: int) -> str:
     word = "".join(takewhile(lambda letter: letter.isalpha() or letter in "°%", rest))
     if not word:
         found = f"found {text!r}" if text == rest else f"found {text!r}, not understood from {rest!r} on"
-        return f'{found}; write units joined by * or /, such as "nV/sqrt(Hz)" or "ppm/K"'
-    if word in HINTS:
-        return f"found {word!r} in {text!r}; {HINTS[word]}"
+        if re.match(r"-?[0-9]", rest) and plain[place - 1 : place].isalpha():
+            return f'{found}; write powers with ^, such as "m^2" or "s^-1"'
+        spaced = " and without spaces" if rest[0].isspace() else ""
+        return f'{found}; write units joined by * or /{spaced}, such as "nV/sqrt(Hz)" or "ppm/K"'
     same = _by_folded_name().get(word.casefold(), [])
-    near = same or difflib.get_close_matches(word, TABLE, n=3, cutoff=0.6)
-    meant = f"; did you mean {', '.join(near[:4])}?" if near else "; it is not a unit known here"
-    return f"unknown unit {word!r} in {text!r}{meant}"
+    hint = HINTS.get(word) or (None if same else _folded_hints().get(word.casefold()))
+    if hint:
+        return f"found {word!r} in {text!r}; {hint}"
+    near = _nearest_case(word, same) or difflib.get_close_matches(word, TABLE, n=3, cutoff=0.6)
+    meant = f"did you mean {', '.join(near[:4])}?" if near else "write a unit's symbol, such as V, bar, degC or ohm"
+    return f"unknown unit {word!r} in {text!r}; {meant}"
+
+
+@cache
+def _folded_hints() -> dict[str, str]:
+    """Hints by lower-case word; of one letter none, as case is what tells such words apart."""
+    return {word.casefold(): hint for word, hint in HINTS.items() if len(word) > 1}
+
+
+def _nearest_case(word: str, names: list[str]) -> list[str]:
+    """Names that differ from the word in case alone, those with the fewest such letters first."""
+    return sorted(names, key=lambda name: sum(a != b for a, b in zip(name, word, strict=False)))

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import sys
 from typing import TYPE_CHECKING, BinaryIO
 
@@ -19,6 +20,14 @@ if TYPE_CHECKING:
 
 MET, NOT_MET, WRONG_REQUEST, NO_SERVICE = range(4)
 CONNECT_TIMEOUT = 3.05
+LONGEST_TIMEOUT = 86_400  # seconds, a day; the system refuses what is far above
+
+
+def _finite(_context: click.Context, _option: click.Parameter, value: float) -> float:
+    """Refuse NaN, which no range does."""
+    if math.isnan(value):
+        raise click.BadParameter("found nan; write a number of seconds")
+    return value
 
 
 @click.command()
@@ -27,7 +36,8 @@ CONNECT_TIMEOUT = 3.05
 @click.option("--json", "as_json", is_flag=True, help="Print the whole answer as JSON instead of the table.")
 @click.option(
     "--timeout",
-    type=click.FloatRange(min=0, min_open=True),
+    type=click.FloatRange(min=0, min_open=True, max=LONGEST_TIMEOUT),
+    callback=_finite,
     default=60.0,
     show_default=True,
     metavar="SECONDS",
@@ -39,9 +49,16 @@ def budget(chain: BinaryIO, url: str | None, as_json: bool, timeout: float) -> N
     Exit status: 0 the limit is met, or none is given; 1 it is not met, or that is undecided;
     2 the request is wrong; 3 the service can't be reached or is broken.
     """
-    answer = _ask(chain.read(), url, timeout)
+    answer = _ask(_text(chain), url, timeout)
     click.echo(json.dumps(answer.to_dict(), indent=2) if as_json else table.draw(answer))
     sys.exit(MET if answer.verdict is None or answer.verdict.overall == "pass" else NOT_MET)
+
+
+def _text(chain: BinaryIO) -> bytes:
+    try:
+        return chain.read()
+    except OSError as error:
+        _end(WRONG_REQUEST, f"{chain.name} can't be read: {error.strerror}")
 
 
 def _ask(text: bytes, url: str | None, timeout: float) -> Budget:

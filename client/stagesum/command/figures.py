@@ -11,6 +11,7 @@ if TYPE_CHECKING:
 
 DIGITS = 4  # significant digits of the largest number of a column
 NOISE = 12  # digits beyond which a double is taken for rounding noise: 0.005000000000000001 is 0.005
+SHARE_NOISE = 15  # the same of a share, where what is missing to 1 matters
 MOST_PLACES = 9
 LEAST_PPM = 1e-6  # below it the rounding of double precision shows
 
@@ -54,6 +55,8 @@ def fixed(value: float, power: int, decimals: int, rounding: str = ROUND_HALF_EV
 
     """
     exact = Decimal(f"{value:.{NOISE}g}").scaleb(-power)
+    if exact and exact.adjusted() >= MOST_PLACES:  # far beyond the scale of its table
+        return f"{exact.quantize(Decimal(1).scaleb(exact.adjusted() - DIGITS + 1), rounding):e}"
     rounded = exact.quantize(Decimal(1).scaleb(-decimals), rounding)
     return f"{abs(rounded) if rounded.is_zero() else rounded:f}"  # no "-0.00"
 
@@ -92,16 +95,19 @@ def short(value: float) -> str:
     return f"{value:.6g}"
 
 
-def percent(share: float) -> str:
-    """Write a yield; the digits go as far as what is missing to 100 % needs.
+def percent(share: float, rounding: str = ROUND_HALF_EVEN) -> str:
+    """Write a share; the digits go as far as what is missing to 100 % needs.
 
     >>> percent(0.999932), percent(0.9998), percent(1.0)
     ('99.9932 %', '99.98 %', '100 %')
+    >>> percent(0.99979999, ROUND_FLOOR)
+    '99.979 %'
 
     """
     missing = 100.0 * (1.0 - share)
     decimals = min(max(1 - _magnitude(missing), 2), MOST_PLACES) if missing > 0.0 else 0
-    text = f"{100.0 * share:.{decimals}f}"
+    exact = Decimal(f"{share:.{SHARE_NOISE}g}").scaleb(2)
+    text = f"{exact.quantize(Decimal(1).scaleb(-decimals), rounding):f}"
     return f"{text.rstrip('0').rstrip('.') if '.' in text else text} %"
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from decimal import ROUND_CEILING, ROUND_FLOOR
 from typing import TYPE_CHECKING
 
 from stagesum.command.figures import exponent, outward, percent, places, scale, short
@@ -105,11 +106,11 @@ def _trials(found: MonteCarlo) -> str:
 
 
 def _joint_yield(found: MonteCarlo) -> str:
-    text = f"{percent(found.joint_yield or 0.0)} of the units are inside the limit at every point"
+    text = f"{percent(found.joint_yield or 0.0, ROUND_FLOOR)} of the units are inside the limit at every point"
     if not found.joint_yield_interval:
         return text
     lower, upper = found.joint_yield_interval
-    text += f" (95 % confidence: {percent(lower)} .. {percent(upper)})"
+    text += f" (95 % confidence: {percent(lower, ROUND_FLOOR)} .. {percent(upper, ROUND_CEILING)})"
     if found.sampling == "importance" and found.effective_trials is not None:
         text += f", by importance sampling worth {found.effective_trials:.2g} plain trials"
     return text

@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import TYPE_CHECKING
 
 from stagesum.command.figures import exponent, fixed, inward, outward, parts_per_million, places, scale, short
-from stagesum.command.grid import Column, cut, grid, paragraph
+from stagesum.command.grid import WIDTH, Column, cut, grid, paragraph
 
 if TYPE_CHECKING:
     from collections.abc import Callable, Iterator, Sequence
@@ -26,17 +26,29 @@ def section(budget: Budget) -> list[str]:
     shown = rows(budget)
     points = [budget.points[row] for row in shown]
     power = exponent(_errors(points))
-    marks = tuple(GOVERNS if row == budget.governing_point else "" for row in shown)
-    keys = [Column("", marks), Column("point", tuple(map(str, shown))), *_place(budget, points)]
     legend = f"errors in {scale(power, budget.unit)}; ppm: outside the limit; {GOVERNS} governs"
-    lines = [f"OPERATING POINTS   {legend}", *grid(keys, list(_columns(points, power)))]
-    left_out = list(points[0].conditions)[MOST_CONDITIONS:]
+    conditions, table = _fitting(budget, shown, list(_columns(points, power)))
+    lines = [*paragraph(f"OPERATING POINTS   {legend}", "", "  "), *table]
+    left_out = list(points[0].conditions)[conditions:]
     if left_out:
         lines += paragraph(f"Conditions not shown: {', '.join(left_out)}; --json has all.", "", "")
     hidden = len(budget.points) - len(shown)
     if hidden:
         lines.append(f"{hidden} points with smaller errors are not shown; --json has all {len(budget.points)}.")
     return lines
+
+
+def _fitting(budget: Budget, shown: Sequence[int], columns: Sequence[Column]) -> tuple[int, list[str]]:
+    """Give how many conditions leave room for the figures, and the table with those."""
+    points = [budget.points[row] for row in shown]
+    marks = tuple(GOVERNS if row == budget.governing_point else "" for row in shown)
+    table: list[str] = []
+    for count in range(MOST_CONDITIONS, -1, -1):
+        keys = [Column("", marks), Column("point", tuple(map(str, shown))), *_place(budget, points, count)]
+        table = grid(keys, columns)
+        if max(map(len, table)) <= WIDTH:
+            return count, table
+    return 0, table
 
 
 def rows(budget: Budget) -> list[int]:
@@ -73,10 +85,10 @@ def _badness(point: Point) -> float:
     return max(-limits.lower, limits.upper) if point.limit is None else used(limits, point.limit)
 
 
-def _place(budget: Budget, points: Sequence[Point]) -> Iterator[Column]:
+def _place(budget: Budget, points: Sequence[Point], conditions: int) -> Iterator[Column]:
     """Where a point lies: input, conditions and, where errors aren't at the input, the signal there."""
     yield Column("input", tuple(short(point.input) for point in points))
-    for name in list(points[0].conditions)[:MOST_CONDITIONS]:
+    for name in list(points[0].conditions)[:conditions]:
         yield Column(cut(name, LONGEST_HEAD), tuple(short(point.conditions[name]) for point in points))
     if budget.refer_to != "input":
         yield Column("nominal", tuple(short(point.nominal) for point in points))
@@ -139,3 +151,5 @@ def _errors(points: Sequence[Point]) -> Iterator[float]:
         for part in (point.limit, point.worst_case, point.rss, point.monte_carlo, point.convolution):
             if part is not None:
                 yield from (part.lower, part.upper)
+        if point.worst_case is not None:
+            yield from (point.worst_case.first_order.lower, point.worst_case.first_order.upper)

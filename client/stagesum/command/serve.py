@@ -10,7 +10,7 @@ import click
 
 from stagesum.errors import MissingExtra
 
-NEEDED = ("gunicorn", "flask", "marshmallow", "numpy", "scipy")
+NEEDED = ("gunicorn", "flask", "marshmallow", "apispec", "numpy", "scipy")
 NO_SERVICE = 3
 
 

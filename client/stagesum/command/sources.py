@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from decimal import ROUND_CEILING, ROUND_HALF_EVEN
 from typing import TYPE_CHECKING
 
 from stagesum.command.figures import exponent, fixed, places, scale, short
@@ -40,7 +41,7 @@ def _columns(shown: Sequence[Contribution], power: int) -> list[Column]:
         Column("sigma", _numbers([part.contribution_sigma for part in shown], power)),
         Column("of variance", tuple(map(_percent, variances))),
         Column("", tuple(map(bar, variances)), left=True),
-        Column("bound", _numbers([part.bound for part in shown], power)),
+        Column("bound", _numbers([part.bound for part in shown], power, ROUND_CEILING)),
         Column("of bound", tuple(map(_percent, bounds))),
         Column("", tuple(map(bar, bounds)), left=True),
     ]
@@ -52,9 +53,9 @@ def _name(part: Contribution) -> str:
     return cut(f"{stage}/{part.source}", LONGEST_NAME)
 
 
-def _numbers(values: list[float], power: int) -> tuple[str, ...]:
+def _numbers(values: list[float], power: int, rounding: str = ROUND_HALF_EVEN) -> tuple[str, ...]:
     decimals = places(values, power)
-    return tuple(fixed(value, power, decimals) for value in values)
+    return tuple(fixed(value, power, decimals, rounding) for value in values)
 
 
 def _percent(share: float) -> str:

@@ -124,7 +124,9 @@ def _analyse(model: Model, threads: int) -> _Analysis:
     laws, no_laws = _convolve(model, S, clusters)
     seldom = None
     if simulation is not None and model.limit is not None and model.monte_carlo.sampling == "auto":
-        seldom = rare.estimate(model, model.limit, S, clusters, propagation, _outside_exactly(model.limit, laws))
+        seldom = rare.estimate(
+            model, model.limit, S, clusters, propagation, _outside_exactly(model.limit, laws), threads
+        )
     return _Analysis(model, S, extremes, propagation, share, simulation, laws, no_laws, seldom)
 
 
