@@ -41,6 +41,7 @@ TRIALS = 32_768
 UNTILTED = 0.1  # share of the mixture that is not tilted
 RARE = 0.02  # shares outside above this are counted plainly
 MOST_EVENTS = 24  # events that get a tilt of their own; the likeliest ones
+FARTHEST = 40.0  # sigmas from the mean beyond which an event is left alone
 STEEPEST = 100.0  # tilts are at most so many 1/sigma
 BISECTIONS = 9  # of the tilt, to one per cent: a near miss costs next to nothing
 FEWEST_FAILURES = 50  # fewer failing trials than this don't carry a confidence interval
@@ -89,13 +90,18 @@ def estimate(
     guess = _normal_guess(limit, rss)
     if (exact.max() if exact is not None else guess.max()) > RARE:
         return None
-    mixture = _Mixture(model, S, clusters, _events(model, limit, S, clusters, rss, guess))
+    with np.errstate(over="ignore", divide="ignore", invalid="ignore"):
+        events = _events(model, limit, S, clusters, rss, guess)
+    if not events:
+        return None
+    mixture = _Mixture(model, S, clusters, events)
     pilot = _run(mixture, limit, TRIALS // 8, 0, threads)
     beta = _regression(pilot) if exact is not None else 0.0
     outcomes = _run(mixture, limit, TRIALS, 1, threads)
     if sum(int(np.count_nonzero(f)) for f, _ in outcomes) < FEWEST_FAILURES:
         return None
-    return _combine(outcomes, beta, float(exact.sum()) if exact is not None else 0.0)
+    found = _combine(outcomes, beta, float(exact.sum()) if exact is not None else 0.0)
+    return found if math.isfinite(found.share) and math.isfinite(found.error) else None
 
 
 def _normal_guess(limit: Limit, rss: Propagation) -> Array:
@@ -115,7 +121,7 @@ def _events(
     for p, side in zip(*np.unravel_index(order, guess.shape), strict=True):
         sign = 1.0 if side else -1.0
         distance = sign * ((limit.upper if side else limit.lower)[p] - rss.mean[p])
-        if rss.sigma[p] > 0.0 and distance > 0.0:
+        if 0.0 < distance < FARTHEST * rss.sigma[p]:
             events.append(_event(model, S[p], int(p), sign, float(distance), float(rss.sigma[p]), clustered))
     return events
 
@@ -212,7 +218,8 @@ def _run(mixture: _Mixture, limit: Limit, trials: int, stream: int, threads: int
         seed = np.random.SeedSequence(mixture.model.monte_carlo.seed, spawn_key=(STREAM + stream, k))
         rng = np.random.Generator(np.random.SFC64(seed))
         sizes = [min(SUB_BLOCK, count - start) for start in range(0, count, SUB_BLOCK)]
-        parts = [_outcome(mixture, event, limit, rng, size, trials) for size in sizes]
+        with np.errstate(over="ignore", divide="ignore", invalid="ignore"):  # a weight of 1 / inf is a true 0
+            parts = [_outcome(mixture, event, limit, rng, size, trials) for size in sizes]
         return np.concatenate([f for f, _ in parts]), np.concatenate([c for _, c in parts])
 
     tasks = [(k, event, count) for k, (event, count) in enumerate(mixture.components(trials)) if count]
