@@ -12,6 +12,7 @@ import pytest
 from openapi_spec_validator import OpenAPIV31SpecValidator, validate
 from stagesum_schemas import budget, budget_answer, openapi
 from stagesum_schemas.base import RecordSchema
+from stagesum_schemas.fields import QuantityField
 
 ROOT = Path(__file__).parents[1]
 
@@ -57,6 +58,20 @@ def test_every_member_has_a_description():
     for name, schema in openapi.document()["components"]["schemas"].items():
         for member, told in schema["properties"].items():
             assert told.get("description"), f"{name}.{member}"
+
+
+def quantities(schema):
+    """Every quantity of a schema, in lists and objects of free names too."""
+    for name, field in schema._declared_fields.items():
+        inner = getattr(field, "inner", None) or getattr(field, "value_field", None) or field
+        if isinstance(inner, QuantityField):
+            yield name, inner.metadata["description"]
+
+
+@pytest.mark.parametrize("schema", schemas(budget), ids=lambda s: s.__name__)
+def test_every_quantity_says_how_a_plain_number_is_read(schema):
+    for name, told in quantities(schema):
+        assert "plain number" in told or "fraction" in told, name
 
 
 def test_the_examples_of_the_fields_are_right():

@@ -225,6 +225,42 @@ def test_a_faulty_source_can_still_be_named_in_a_correlation(client):
     assert set(faults_of(client, body)) == {"#/stages/0/sources/0/max"}
 
 
+def test_faults_are_told_in_the_order_of_the_body(client):
+    """Form and meaning mixed, and an object's own fault before those of its members."""
+    body = {"titel": "", **copy.deepcopy(FULL), "coverage": 2}
+    body["stages"][0]["sources"][0]["max"] = "5 s"
+    body["stages"][1]["sources"][0] = {"nmae": "offset", "max": True}
+    assert list(faults_of(client, body)) == [
+        "#/titel",
+        "#/stages/0/sources/0/max",
+        "#/stages/1/sources/0",
+        "#/stages/1/sources/0/nmae",
+        "#/stages/1/sources/0/max",
+        "#/coverage",
+    ]
+
+
+def test_faults_of_meaning_alone_are_told_in_the_order_of_the_body(client):
+    body = {"limit": {"max": "1 s"}, **{name: FULL[name] for name in ("input", "stages")}, "refer_to": "nowhere"}
+    body["stages"] = copy.deepcopy(body["stages"])
+    body["stages"][0]["sources"][0]["max"] = "5 s"
+    assert list(faults_of(client, body)) == ["#/limit/max", "#/stages/0/sources/0/max", "#/refer_to"]
+
+
+def test_a_source_whose_name_is_misspelt_leaves_its_correlation_unjudged(client):
+    body = copy.deepcopy(FULL)
+    source = body["stages"][0]["sources"][0]
+    source["nmae"] = source.pop("name")
+    assert set(faults_of(client, body)) == {"#/stages/0/sources/0", "#/stages/0/sources/0/nmae"}
+
+
+def test_a_faulty_name_is_not_mistaken_for_that_of_another_source(client):
+    body = copy.deepcopy(FULL)
+    del body["correlations"]
+    body["stages"][0]["sources"] = [{"name": 5, "max": "1 mV"}, {"name": "source 0", "max": "1 mV", "at": "output"}]
+    assert set(faults_of(client, body)) == {"#/stages/0/sources/0/name"}
+
+
 def test_a_limit_is_not_judged_at_a_node_that_is_not_known(client):
     body = copy.deepcopy(FULL)
     body["refer_to"] = 5

@@ -42,6 +42,8 @@ MOST_CORRELATIONS = 2000
 FEWEST_TRIALS, MOST_TRIALS = 100, 10**9
 MOST_READINGS = 10**6
 HIGHEST_SEED = 2**63 - 1
+# of a figure: where a source acts gives its unit, which for a standard's error is the input's
+PLAIN = "A plain number is in the unit that closes there; for gain and nonlinearity it is a share"
 HIGHEST_COVERAGE = 1.0 - 1e-9  # nearer to 1 the quantiles of a law without bounds are no longer meaningful
 
 
@@ -64,7 +66,10 @@ class InputSchema(RecordSchema):
         required=True,
         example=[0, 5, 10],
     )
-    full_scale = QuantityField("Span that nonlinearity and of_span refer to. Default: of the values", example="10 bar")
+    full_scale = QuantityField(
+        "Span that nonlinearity and of_span refer to. Default: of the values. A plain number is in the input's unit",
+        example="10 bar",
+    )
 
 
 class ConditionSchema(RecordSchema):
@@ -72,7 +77,7 @@ class ConditionSchema(RecordSchema):
 
     record = records.ConditionSpec
     nominal = QuantityField(
-        "Value at which the condition has no effect. Its unit is that of the condition in the answer",
+        "Value at which the condition has no effect. Its unit is the condition's in the answer; a plain number has none",
         required=True,
         example="25 degC",
     )
@@ -90,14 +95,14 @@ class LawSchema(RecordSchema):
     """What a data sheet line says; a plain number is in the coherent unit of the place where it acts."""
 
     record = records.LawSpec
-    typ = QuantityField("Typical figure. How it is read: rules", example="12 uV")
-    min = QuantityField("Lower guaranteed limit, or the guaranteed rejection in dB", example="100 dB")
-    max = QuantityField("Upper guaranteed limit. Alone it means +-max", example="50 uV")
-    mean = QuantityField("Mean, where it isn't zero or the middle of the limits", example="1 uV")
+    typ = QuantityField(f"Typical figure, read as rules say. {PLAIN}", example="12 uV")
+    min = QuantityField(f"Lower guaranteed limit, or the guaranteed rejection in dB. {PLAIN}", example="100 dB")
+    max = QuantityField(f"Upper guaranteed limit. Alone it means +-max. {PLAIN}", example="50 uV")
+    mean = QuantityField(f"Mean, where it isn't zero or the middle of the limits. {PLAIN}", example="1 uV")
     shape = Word("Shape of the distribution. Default: from the figures given", SHAPES, example="uniform")
     samples = ListOf(
         "Measured errors, drawn from as they are",
-        QuantityField("One measured error", example="3 uV"),
+        QuantityField(f"One measured error. {PLAIN}", example="3 uV"),
         2,
         100_000,
         example=["-3 uV", "1 uV", "4 uV"],
@@ -115,7 +120,10 @@ class SourceSchema(LawSchema):
     at = Word("Where an offset is stated: at the stage's input or output", ("input", "output"), default="input")
     per = StrictText("Condition it grows with. The figures are per unit of it", 1, 100, example="temperature")
     law = Word("How it grows with the condition", ("linear", "sqrt", "square"), default="linear")
-    times = QuantityField("Constant beside the figures, such as a resistance beside a current", example="350 ohm")
+    times = QuantityField(
+        "Constant beside the figures, such as a resistance beside a current. A plain number is a factor",
+        example="350 ohm",
+    )
     varies_by = Word("Fixed in a built unit, or new at every reading", ("unit", "reading"), default="unit")
 
 
@@ -126,7 +134,10 @@ class StageSchema(RecordSchema):
     name = StrictText("Name, unique in the chain", 1, 100, without="/", required=True, example="amplifier")
     gain = QuantityField("Nominal gain, output over input. A plain number keeps the unit", required=True, example=100)
     unit = UnitField("Unit of the stage's output. Default: the one that closes", example="mV")
-    full_scale = QuantityField("Span of the output. Default: the input's carried through", example="2.5 V")
+    full_scale = QuantityField(
+        "Span of the output. Default: the input's carried through. A plain number is in the output's unit",
+        example="2.5 V",
+    )
     sources = ListOf(
         "Error sources", Part("One source", SourceSchema), 0, MOST_SOURCES, example=[{"name": "offset", "max": "50 uV"}]
     )
@@ -139,7 +150,7 @@ class CalibrationPointSchema(RecordSchema):
     input = QuantityField("Input value. A plain number is in the input's unit", required=True, example=0)
     conditions = ByName(
         "Conditions that differ from nominal during calibration",
-        QuantityField("Value of the condition", example="25 degC"),
+        QuantityField("Value of the condition. A plain number is in the unit of nominal", example="25 degC"),
         MOST_CONDITIONS,
         example={"temperature": "25 degC"},
     )
@@ -158,7 +169,7 @@ class CalibrationSchema(RecordSchema):
     record = records.CalibrationSpec
     points = ListOf("Calibration points", Part("One point", CalibrationPointSchema), 1, 2, required=True)
     readings_averaged = readings_averaged()
-    standard = Part("Error of the standard. Default: none", StandardSchema)
+    standard = Part("Error of the standard, in the input's unit. Default: none", StandardSchema)
 
 
 class CorrelationSchema(RecordSchema):
@@ -181,7 +192,9 @@ class LimitSchema(RecordSchema):
 
     record = records.LimitSpec
     min = QuantityField("Lower limit, beside max. A plain number is in the unit of the node", example="-0.009 bar")
-    max = QuantityField("Upper limit. Alone it means +-max", example="0.009 bar")
+    max = QuantityField(
+        "Upper limit. Alone it means +-max. A plain number is in the unit of the node", example="0.009 bar"
+    )
     of_span = QuantityField("Share of the span, a fraction or in %", example="0.1 %")
     of_reading = QuantityField("Share of the nominal reading, a fraction or in %", example="0.05 %")
     yield_ = StrictNumber(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from typing import Any
-from urllib.parse import quote
+from urllib.parse import quote, unquote
 
 from stagesum_schemas.records import Fault
 
@@ -33,6 +33,30 @@ def faults(messages: Any, body: Any, pointer: str = "#") -> tuple[Fault, ...]:
         return tuple(found)
     texts = messages if isinstance(messages, list) else [messages]
     return tuple(Fault(pointer, str(text)) for text in texts)
+
+
+def in_body_order(found: tuple[Fault, ...], body: Any) -> tuple[Fault, ...]:
+    """Sort faults as their places stand in the body; an object's own come before those of its members."""
+    order: dict[int, dict[str, int]] = {}  # places of the members of each object met, listed once
+    return tuple(sorted(found, key=lambda fault: _position(fault.pointer, body, order)))
+
+
+def _position(pointer: str, body: Any, order: dict[int, dict[str, int]]) -> tuple[int, ...]:
+    """Where each step of a pointer stands among its neighbours; ends where the body ends."""
+    positions = []
+    for step in pointer.split("/")[1:]:
+        name = unquote(step).replace("~1", "/").replace("~0", "~")
+        if isinstance(body, dict) and name in body:
+            if id(body) not in order:
+                order[id(body)] = {key: place for place, key in enumerate(body)}
+            positions.append(order[id(body)][name])
+            body = body[name]
+        elif isinstance(body, list) and name.isdecimal() and int(name) < len(body):
+            positions.append(int(name))
+            body = body[int(name)]
+        else:
+            break
+    return tuple(positions)
 
 
 def _step(key: Any, body: Any, pointer: str) -> tuple[Any, str]:

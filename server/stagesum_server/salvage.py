@@ -1,7 +1,7 @@
 """From a body to the model, with all faults at once: those of form and, where it can be told, those of meaning.
 
-Faults of form normally hide those of meaning, because nothing can be built. Where they lie only inside single sources or
-in optional members, the rest is still worth examining: each faulty source is replaced by a harmless one of its name,
+Faults of form normally hide those of meaning, because nothing can be built. Where they lie only inside single sources
+or in optional members, the rest is still worth examining: each faulty source is replaced by a harmless one of its name,
 each faulty optional member is left out, and intake looks at what remains.
 """
 
@@ -14,7 +14,7 @@ from marshmallow import ValidationError
 from stagesum_schemas.budget import BudgetRequestSchema
 from stagesum_schemas.fields import found
 from stagesum_schemas.pointers import faults as faults_of
-from stagesum_schemas.pointers import member
+from stagesum_schemas.pointers import in_body_order, member
 from stagesum_schemas.records import Fault
 
 from stagesum_server import intake
@@ -28,6 +28,7 @@ SCHEMA = BudgetRequestSchema()
 NEEDED = ("input", "stages", "conditions")  # nothing can be said about a chain where one of these has a fault
 # a limit's unit is that of the node referred to; without the one the other can't be judged
 GO_TOGETHER = {"refer_to": ("refer_to", "limit")}
+UNNAMED = "\ue000"  # begins a placeholder's name where the source's own is faulty: a letter that no sound name has
 
 
 def build(body: Any, limits: Limits) -> Model:
@@ -36,9 +37,17 @@ def build(body: Any, limits: Limits) -> Model:
     Raises
     ------
     InvalidRequest
-        With every fault of form, and every fault of meaning of what is left without the faulty places.
+        With every fault of form, and every fault of meaning of what is left without the faulty places; in the order
+        of the body.
 
     """
+    try:
+        return _build(body, limits)
+    except InvalidRequest as error:
+        raise InvalidRequest(in_body_order(error.faults, body)) from None
+
+
+def _build(body: Any, limits: Limits) -> Model:
     if not isinstance(body, dict):
         raise InvalidRequest((Fault("#", f"found {found(body)}; write an object, see /openapi.json"),))
     _refuse_sizes(body, limits)
@@ -87,12 +96,17 @@ def _without(body: dict[str, Any], messages: dict[str, Any]) -> tuple[dict[str, 
     if sources is None or any(name not in body or name in NEEDED for name in messages if name != "stages"):
         return None
     dropped = {gone for name in messages if name != "stages" for gone in GO_TOGETHER.get(name, (name,))}
-    if any("varies_by" in wrong for wrong in sources.values()):
-        dropped.add("correlations")  # may two sources be correlated? that depends on how each varies
+    if any(_unknown_to_correlations(wrong) for wrong in sources.values()):
+        dropped.add("correlations")
     sound = {name: value for name, value in body.items() if name not in dropped}
     sound["stages"] = _with_placeholders(body["stages"], sources)
     places = {f"#/{member(name)}" for name in dropped} | {f"#/stages/{i}/sources/{j}" for i, j in sources}
     return sound, places
+
+
+def _unknown_to_correlations(wrong: Any) -> bool:
+    """Whether a faulty source can't be found by its name, or not be paired since it isn't known how it varies."""
+    return not isinstance(wrong, dict) or bool({"name", "varies_by"} & set(wrong))
 
 
 def _faulty_sources(messages: Any) -> dict[tuple[int, int], Any] | None:
@@ -112,7 +126,7 @@ def _with_placeholders(stages: list[Any], faulty: dict[tuple[int, int], Any]) ->
     for (i, j), wrong in faulty.items():
         if made[i] is stages[i]:
             made[i] = {**stages[i], "sources": list(stages[i]["sources"])}
-        made[i]["sources"][j] = _placeholder(stages[i]["sources"][j], wrong, f"source {j}")
+        made[i]["sources"][j] = _placeholder(stages[i]["sources"][j], wrong, f"{UNNAMED}{j}")
     return made
 
 

@@ -65,7 +65,8 @@ def _said(error: HTTPException) -> str:
     if isinstance(error, NotFound):
         return f"There is nothing at {request.path[:SHORT]!r}; /openapi.json has all paths."
     if isinstance(error, MethodNotAllowed):
-        return f"{request.path[:SHORT]} doesn't take {request.method[:SHORT]}; it takes {', '.join(error.valid_methods or ())}."
+        taken = ", ".join(error.valid_methods or ())
+        return f"{request.path[:SHORT]} doesn't take {request.method[:SHORT]}; it takes {taken}."
     if isinstance(error, RequestEntityTooLarge):
         return f"The body has more than {request.max_content_length} bytes; split the request, or send less."
     return error.description or HTTP_STATUS_CODES[error.code or 400]
