@@ -8,6 +8,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import pytest
+from hypothesis import settings
 from stagesum_server.app import create_app
 from stagesum_server.settings import Settings
 
