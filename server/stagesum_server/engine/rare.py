@@ -101,7 +101,7 @@ def estimate(
     if sum(int(np.count_nonzero(f)) for f, _ in outcomes) < FEWEST_FAILURES:
         return None
     found = _combine(outcomes, beta, float(exact.sum()) if exact is not None else 0.0)
-    return found if math.isfinite(found.share) and math.isfinite(found.error) else None
+    return found if math.isfinite(found.share + found.error + found.effective_trials) else None
 
 
 def _normal_guess(limit: Limit, rss: Propagation) -> Array:
@@ -239,7 +239,9 @@ def _combine(outcomes: list[tuple[Array, Array]], beta: float, known: float) -> 
     # a control that agrees in every failing trial seen doesn't prove that it agrees in all
     failures = sum(int(np.count_nonzero(f)) for f, _ in outcomes)
     error = max(math.sqrt(variance), share / failures)
-    return JointFailure(share, error, share * (1.0 - share) / error**2)
+    # the square of a share below 1e-154 would underflow
+    effective = share / error * ((1.0 - share) / error) if error > 0.0 else math.inf
+    return JointFailure(share, error, effective)
 
 
 def _outcome(

@@ -25,6 +25,7 @@ if TYPE_CHECKING:
 
     Array = NDArray[np.float64]
 
+FARTHEST_DB = 600.0  # ratios of 1e-30 to 1e30, the sizes that any other figure may have
 LAW_POWER = {"linear": 1, "sqrt": 0.5, "square": 2}
 
 
@@ -208,6 +209,11 @@ def _rejection(spec: LawSpec, quantities: dict[str, Quantity], coherent: Unit, p
             faults.add(
                 f"{pointer}/{name}", f"found {quantity.text}; beside a figure in dB, min and typ in dB are what is read"
             )
+        elif abs(quantity.value) > FARTHEST_DB:
+            faults.add(
+                f"{pointer}/{name}",
+                f"found {quantity.text}; write a rejection from {-FARTHEST_DB:g} to {FARTHEST_DB:g} dB",
+            )
     if "min" in quantities and "max" in quantities:
         faults.add(f"{pointer}/max", "a rejection has one guaranteed figure: give it in min, and leave out max")
     guaranteed, typ = quantities.get("min", quantities.get("max")), quantities.get("typ")
@@ -216,7 +222,7 @@ def _rejection(spec: LawSpec, quantities: dict[str, Quantity], coherent: Unit, p
             f"{pointer}/typ",
             f"typ {typ.text} is below the guaranteed {guaranteed.text}; a typical rejection is the larger figure",
         )
-    ratio = {q: 10.0 ** (-q.value / 20.0) for q in (guaranteed, typ) if q is not None}
+    ratio = {q: 10.0 ** (-_within(q.value) / 20.0) for q in (guaranteed, typ) if q is not None}
     return Figures(
         "",
         typ=None if typ is None else ratio[typ],
@@ -225,6 +231,11 @@ def _rejection(spec: LawSpec, quantities: dict[str, Quantity], coherent: Unit, p
         dof=spec.dof,
         top_ratio=spec.top_ratio,
     )
+
+
+def _within(decibels: float) -> float:
+    """A figure beyond the range is refused; until then it must not overflow."""
+    return min(max(decibels, -FARTHEST_DB), FARTHEST_DB)
 
 
 # ---------------------------------------------------------------------------------------------
